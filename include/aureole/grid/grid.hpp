@@ -36,6 +36,13 @@ std::vector<double> cell_volumes(const Grid& grid);
 /// with z.front() != 0.
 void validate(const Grid& grid);
 
+/// Every second edge: neighbouring cells joined in pairs along each axis, an odd last cell alone. On a grid of both sides the pairs are counted
+/// from the middle outwards where an edge lies at z = 0, so that the plane stays an edge.
+Grid coarsened(const Grid& grid);
+
+/// For each stored cell of `grid`, the cell of coarsened(grid) that holds it.
+std::vector<std::size_t> coarse_cell(const Grid& grid);
+
 /// Edges 0..extent (or -extent..extent if two_sided), `cells` in all, whose widths grow geometrically from `smallest` at 0.
 /// smallest = 0 or >= extent/cells gives even cells.
 std::vector<double> stretched_edges(double extent, std::size_t cells, double smallest, bool two_sided);

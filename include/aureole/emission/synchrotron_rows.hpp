@@ -1,0 +1,45 @@
+#pragma once
+
+#include "aureole/base/run_context.hpp"
+#include "aureole/emission/kernels.hpp"
+#include "aureole/spectra/basis.hpp"
+
+#include <cstddef>
+#include <vector>
+
+namespace aureole::emission {
+
+/// Synchrotron weights on a spectrum's own nodes, tabulated against u = ln(nu/(nu_1 B)) and against how
+/// ordered the field is, t = b0^2/B^2, where b0 is the projected ordered field, sigma the rms of one
+/// component of the Gaussian random field, B^2 = b0^2 + 2 sigma^2 and nu_1 = 3e/(4 pi m c). The emissivity of
+/// a cell is  scale(nu) B^(1 + tilt) sum_i M_i row_i(u, t),  rows tabulated times exp(tilt u), so that they
+/// are flat in u for the spectra one meets, and straight lines between the table's values suffice.
+struct SynchrotronRows {
+    static constexpr double tilt = 0.75;
+    double first = 0, step = 0.02;     ///< of u
+    std::size_t tables = 0;            ///< values of u
+    std::size_t nodes = 0, stride = 0; ///< of a row, and its padded length
+    std::vector<double> order;         ///< values of t, 0 .. 1
+    std::vector<float> total;          ///< [order][table][stride], times `unit`
+    std::vector<float> polarised;      ///< the same; empty unless asked for
+    std::vector<float> total_fallback; ///< [order][table][interval][4]
+    std::vector<float> polarised_fallback;
+    double unit = 1;
+    double beyond = 0; ///< u above which nothing is emitted (x > 700 for the highest energy)
+};
+
+/// from, to: range of u needed. Throws nothing; rows beyond `beyond` are left out.
+SynchrotronRows synchrotron_rows(
+    const spectra::Basis& basis, double from, double to, bool polarised, const RunContext& context);
+
+/// Where a field lies between the table's orders: first index and the cubic (4) or exact (1) fractions.
+struct OrderPlace {
+    std::size_t first = 0, count = 1;
+    float fraction[4] = {1, 0, 0, 0};
+};
+OrderPlace order_place(const SynchrotronRows& rows, double order);
+
+/// Constant C of  j = C B integral N(T) <b F(x/b)> dT  [erg s-1 cm-3 Hz-1 sr-1]: sqrt3 e^3 / (4 pi m c^2).
+double synchrotron_constant();
+
+} // namespace aureole::emission

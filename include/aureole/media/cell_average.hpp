@@ -1,0 +1,41 @@
+#pragma once
+
+#include "aureole/base/run_context.hpp"
+#include "aureole/grid/grid.hpp"
+#include "aureole/scenario/scenario.hpp"
+
+#include <cstddef>
+#include <functional>
+#include <vector>
+
+namespace aureole::media {
+
+/// Shape of a spatial profile, without its amplitude, at cylindrical radius R and height z, both cm. Only for
+/// the closed kinds (not `file`, `formula`).
+///   constant 1;  double_exponential exp(-R/radius - |z|/h);  sech2 exp(-R/radius) / cosh^2(z/h);
+///   gaussian exp(-R^2/radius^2 - z^2/h^2);  beta (1 + r^2/core^2)^(-1.5 slope);  power_law (1 +
+///   r/core)^(-slope),
+/// with h = height exp(R/flare) where a flare is given, and r^2 = R^2 + z^2.
+/// Sources: exponential and sech2 discs, van der Kruit & Searle 1981, A&A 95, 105; beta model, Cavaliere &
+/// Fusco-Femiano 1976, A&A 49, 137.
+double profile_shape(const scenario::ProfileSpec& profile, double radius, double height);
+
+/// Averages over stored cells `first_plane` .. `last_plane` - 1 (z planes) of amplitude x shape, integrals
+/// over the cell and not centre samples: Gauss-Legendre with 3 points per axis in panels no longer than half
+/// the scale in that direction, split at z = 0. A formula is refined by halving until its average is stable
+/// to 1e-4 (at most 4 times). Result [cells of these planes], in CGS of the profile's value. Throws
+/// Error(scenario) naming the key and the place where a formula is not finite, or negative where
+/// `allow_negative` is false.
+std::vector<double> cell_averages(const scenario::ProfileSpec& profile,
+                                  const grid::Grid& grid,
+                                  std::size_t first_plane,
+                                  std::size_t last_plane,
+                                  bool allow_negative);
+
+/// The whole grid, in parallel over planes.
+std::vector<float> cell_averages(const scenario::ProfileSpec& profile,
+                                 const grid::Grid& grid,
+                                 bool allow_negative,
+                                 const RunContext& context);
+
+} // namespace aureole::media

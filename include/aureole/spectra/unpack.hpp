@@ -1,0 +1,21 @@
+#pragma once
+
+#include <cstddef>
+#include <cstdint>
+
+namespace aureole::spectra {
+
+/// Turns raw big-endian 32-bit floats of a FITS file into weighted spectra: weighted[cell * stride + i] =
+/// value * scale[i]. The padding from `nodes` to `stride` is left alone. Adds the 32-bit words of the data to
+/// `word_sum` (the FITS checksum before its carries are folded). Returns false if any value is negative
+/// (other than -0) or not finite; the output then holds what was found. Compiled for several instruction sets
+/// and chosen at run time; every version gives the same bits.
+bool unpack(const std::uint32_t* raw,
+            std::size_t cells,
+            std::size_t nodes,
+            const float* scale,
+            float* weighted,
+            std::size_t stride,
+            std::uint64_t* word_sum);
+
+} // namespace aureole::spectra

@@ -1,0 +1,249 @@
+#include "emission_check.hpp"
+
+#include "aureole/base/constants.hpp"
+#include "aureole/base/parallel.hpp"
+#include "aureole/physics/kinematics.hpp"
+#include "aureole/physics/synchrotron.hpp"
+
+#include <algorithm>
+#include <cmath>
+
+namespace aureole::emission {
+
+namespace {
+
+using spectra::Basis;
+using spectra::Source;
+using spectra::Species;
+
+/// The mean spectrum behind one contribution, weighted with volume and with the number that multiplies it.
+struct MeanSpectrum {
+    std::vector<double> value;
+    double weight = 0;
+    double field = 0; // weighted mean of B, for synchrotron
+};
+
+constexpr std::size_t sample_cells = 2048;
+
+double field_across(const media::Field& field, std::size_t cell) {
+    double b2 = 0;
+    if (!field.random_rms.empty()) {
+        b2 += 2.0 / 3.0 * field.random_rms[cell] * field.random_rms[cell];
+    }
+    if (!field.ordered.empty()) {
+        for (const float component : field.ordered[cell]) {
+            b2 += 2.0 / 3.0 * component * component;
+        }
+    }
+    return std::sqrt(b2);
+}
+
+std::vector<float> as_float(const std::vector<double>& values) {
+    std::vector<float> result(values.size());
+    std::transform(values.begin(), values.end(), result.begin(),
+                   [](double v) { return static_cast<float>(v); });
+    return result;
+}
+
+double emission_of(const WeightRow& row, const Basis& basis, const std::vector<double>& spectrum) {
+    double sum = 0;
+    for (std::size_t i = 0; i < spectrum.size(); ++i) {
+        sum += row.cubic[i] * spectrum[i];
+    }
+    std::vector<std::size_t> negative(basis.intervals());
+    const std::size_t found = basis.negative_intervals(as_float(spectrum).data(), negative.data());
+    for (std::size_t n = 0; n < found; ++n) {
+        const std::size_t j = negative[n];
+        for (std::size_t s = 0; s < basis.stencil_size(); ++s) {
+            sum += row.fallback[4 * j + s] * spectrum[basis.stencil_start(j) + s];
+        }
+    }
+    return sum;
+}
+
+/// Every second node, and the last.
+std::vector<std::size_t> half_nodes(std::size_t nodes) {
+    std::vector<std::size_t> kept;
+    for (std::size_t i = 0; i < nodes; i += 2) {
+        kept.push_back(i);
+    }
+    if (kept.back() != nodes - 1) {
+        kept.push_back(nodes - 1);
+    }
+    return kept;
+}
+
+/// Slope p of N ~ T^-p through two nodes of M = N T^s; a spectrum that is zero there ends sharply.
+double end_slope(const Basis& basis, const std::vector<double>& m, bool above) {
+    const std::size_t inner = above ? m.size() - 2 : 1;
+    const std::size_t outer = above ? m.size() - 1 : 0;
+    if (!(m[inner] > 0) || !(m[outer] > 0)) {
+        return above ? 1e3 : -1e3;
+    }
+    const double rise =
+        std::log(m[outer] / m[inner]) / std::log(basis.energy()[outer] / basis.energy()[inner]);
+    return spectra::weighting - rise;
+}
+
+struct Contribution {
+    double full = 0, half = 0, above = 0, below = 0, slow = 0;
+};
+
+/// What one kernel makes of one mean spectrum, per unit weight.
+Contribution contribution(const Basis& basis,
+                          const MeanSpectrum& mean,
+                          const std::function<double(double)>& kernel,
+                          const std::vector<double>& splits) {
+    constexpr int points = 6;
+    constexpr double decades_up = 4;
+    constexpr double decades_down = 3;
+    Contribution result;
+    result.full = emission_of(integrate_kernel(basis, kernel, splits, points), basis, mean.value);
+    std::vector<double> energy;
+    std::vector<double> value;
+    for (const std::size_t i : half_nodes(basis.nodes())) {
+        energy.push_back(basis.energy()[i]);
+        value.push_back(mean.value[i]);
+    }
+    const Basis half(energy);
+    result.half = emission_of(integrate_kernel(half, kernel, splits, 2 * points), half, value);
+    if (mean.value.back() > 0) {
+        result.above = mean.value.back() * tail_weight(basis, kernel, splits,
+                                                       end_slope(basis, mean.value, true), true, decades_up);
+    }
+    if (mean.value.front() > 0) {
+        result.below =
+            mean.value.front() *
+            tail_weight(basis, kernel, splits, end_slope(basis, mean.value, false), false, decades_down);
+    }
+    return result;
+}
+
+} // namespace
+
+std::vector<PlaneReport> luminosities(const Emissivity& emissivity) {
+    const auto volume = grid::cell_volumes(emissivity.cells);
+    const std::size_t planes = emissivity.planes.size();
+    std::vector<double> sum(planes, 0.0);
+    for (std::size_t cell = 0; cell < volume.size(); ++cell) {
+        const float* value = emissivity.value.data() + cell * planes;
+        for (std::size_t p = 0; p < planes; ++p) {
+            sum[p] += volume[cell] * static_cast<double>(value[p]);
+        }
+    }
+    std::vector<PlaneReport> reports(planes);
+    for (std::size_t p = 0; p < planes; ++p) {
+        reports[p].luminosity = 4 * constants::pi * sum[p] * emissivity.planes[p].unit;
+    }
+    return reports;
+}
+
+double check_spectra(std::vector<PlaneReport>& planes,
+                     const grid::Grid& grid,
+                     const media::Media& media,
+                     const ProductPlan& plan,
+                     const std::vector<Source>& sources,
+                     const std::vector<Channel>& channels,
+                     bool synchrotron,
+                     const RunContext& context) {
+    const auto volume = grid::cell_volumes(grid);
+    const std::size_t step = std::max<std::size_t>(1, grid.stored_cells() / sample_cells);
+
+    // The last mean spectrum belongs to synchrotron emission.
+    std::vector<MeanSpectrum> means(plan.terms.size() + 1);
+    for (const Source& source : sources) {
+        const auto reader = source.open();
+        std::vector<float> spectrum(source.basis->nodes());
+        const auto add = [&](MeanSpectrum& mean, double weight, double field) {
+            mean.value.resize(spectrum.size(), 0.0);
+            for (std::size_t i = 0; i < spectrum.size(); ++i) {
+                mean.value[i] += weight * spectrum[i];
+            }
+            mean.weight += weight;
+            mean.field += weight * field;
+        };
+        for (std::size_t cell = 0; cell < grid.stored_cells(); cell += step) {
+            reader(cell, 1, spectrum.data(), spectrum.size());
+            for (std::size_t t = 0; t < plan.terms.size(); ++t) {
+                if (plan.kernels[plan.terms[t].kernel].species == source.species) {
+                    add(means[t], volume[cell] * static_cast<double>(plan.terms[t].scalar(cell)), 0);
+                }
+            }
+            if (source.species == Species::electrons && synchrotron) {
+                const double b = field_across(media.field, cell);
+                add(means.back(), volume[cell] * std::pow(b / constants::microgauss, 1.75), b);
+            }
+        }
+    }
+    for (MeanSpectrum& mean : means) {
+        if (mean.weight > 0) {
+            for (double& value : mean.value) {
+                value /= mean.weight;
+            }
+            mean.field /= mean.weight;
+        }
+    }
+    const auto basis_of = [&](Species species) -> const Basis& {
+        return *std::find_if(sources.begin(), sources.end(), [&](const Source& s) {
+                    return s.species == species;
+                })->basis;
+    };
+
+    std::vector<double> slow(channels.size(), 0.0);
+    for_each_block(context, channels.size(), [&](std::size_t c) {
+        const Channel& channel = channels[c];
+        Contribution sum;
+        const auto add = [&](const Contribution& one, double weight) {
+            sum.full += weight * one.full;
+            sum.half += weight * one.half;
+            sum.above += weight * one.above;
+            sum.below += weight * one.below;
+            sum.slow += weight * one.slow;
+        };
+        if (channel.band == Band::radio) {
+            const MeanSpectrum& mean = means.back();
+            if (mean.weight > 0) {
+                const double critical = physics::synchrotron_critical_constant * mean.field;
+                add(contribution(basis_of(Species::electrons), mean,
+                                 [&](double kinetic) {
+                                     const double gamma =
+                                         physics::lorentz_factor(kinetic, constants::electron_rest_energy);
+                                     return physics::synchrotron_random(channel.centre() /
+                                                                        (critical * gamma * gamma));
+                                 },
+                                 {}),
+                    1);
+            }
+        } else {
+            for (std::size_t t = 0; t < plan.terms.size(); ++t) {
+                if (!(means[t].weight > 0)) {
+                    continue;
+                }
+                const ProductKernel& kernel = plan.kernels[plan.terms[t].kernel];
+                const auto value = channel_kernel(kernel, channel);
+                Contribution one =
+                    contribution(basis_of(kernel.species), means[t], value, channel_splits(kernel, channel));
+                if (plan.terms[t].process.starts_with("inverse_compton")) {
+                    const double limit = 9 * constants::electron_rest_energy;
+                    one.slow = emission_of(
+                        integrate_kernel(
+                            basis_of(kernel.species),
+                            [&](double kinetic) { return kinetic < limit ? value(kinetic) : 0.0; },
+                            std::vector<double>{limit}, 6),
+                        basis_of(kernel.species), means[t].value);
+                }
+                add(one, means[t].weight);
+            }
+        }
+        constexpr double coarsening = 10;
+        if (sum.full > 0) {
+            planes[c].missing_above = sum.above / (sum.full + sum.above + sum.below);
+            planes[c].missing_below = sum.below / (sum.full + sum.above + sum.below);
+            planes[c].energy_error = std::abs(sum.half - sum.full) / (coarsening * sum.full);
+            slow[c] = std::max(0.0, sum.slow / sum.full);
+        }
+    });
+    return slow.empty() ? 0 : *std::max_element(slow.begin(), slow.end());
+}
+
+} // namespace aureole::emission

@@ -1,0 +1,72 @@
+#pragma once
+
+#include "aureole/emission/channels.hpp"
+#include "aureole/emission/emit.hpp"
+#include "aureole/emission/weights.hpp"
+#include "aureole/physics/pion_decay.hpp"
+
+#include <functional>
+#include <string>
+#include <vector>
+
+namespace aureole::emission {
+
+/// A kernel whose integral over the spectrum, times one number per cell, is an emissivity. kernel(T, E):
+/// photons s-1 sr-1 erg-1 per particle and unit of the cell's number, times cm-3 of whatever that number
+/// counts. T kinetic energy, E photon energy, erg.
+struct ProductKernel {
+    spectra::Species species = spectra::Species::electrons;
+    std::function<double(double kinetic, double photon)> value;
+    std::function<std::vector<double>(double photon)> splits; ///< kinetic energies where the kernel bends
+};
+
+/// One contribution to the gamma channels: a kernel, the cell's number that multiplies it, and the process it
+/// belongs to.
+struct ProductTerm {
+    std::string process;
+    std::size_t kernel = 0;
+    std::function<float(std::size_t stored_cell)> scalar;
+};
+
+struct ProductPlan {
+    std::vector<ProductKernel> kernels;
+    std::vector<ProductTerm> terms;
+};
+
+/// The model of a name in the scenario. Throws Error(scenario) for an unknown one.
+physics::PionModel pion_model(const std::string& name);
+
+ProductPlan
+plan_products(const media::Media& media, const Processes& processes, bool electrons, bool protons);
+
+/// The weight rows of all kernels of one species: kernel after kernel, channel after channel.
+struct ProductSet {
+    std::vector<std::size_t> kernels; ///< which of the plan
+    std::vector<WeightRow> row;       ///< [kernels.size() x channels]
+    std::vector<double> largest;      ///< [channels] largest weight
+    std::size_t channels = 0, nodes = 0;
+    std::size_t rows = 0, stride = 0; ///< padded
+    std::vector<float> packed;        ///< as kernels::products wants them
+    std::vector<float> fallback;      ///< [interval][4][rows]
+
+    std::size_t first_row(std::size_t kernel) const;
+    void
+    add_fallback(const spectra::Basis& basis, std::size_t interval, const float* spectrum, float* sums) const;
+};
+
+ProductSet build_products(const ProductPlan& plan,
+                          spectra::Species species,
+                          const spectra::Source* source,
+                          const std::vector<Channel>& channels,
+                          const std::vector<std::size_t>& gamma_channels,
+                          const RunContext& context);
+
+/// Fills `packed` and `fallback`; unit[g] divides the rows of channel g.
+void pack(ProductSet& set, const std::vector<double>& unit);
+
+/// The kernel as a function of the kinetic energy for a channel: at its photon energy, or integrated over its
+/// band.
+std::function<double(double)> channel_kernel(const ProductKernel& kernel, const Channel& channel);
+std::vector<double> channel_splits(const ProductKernel& kernel, const Channel& channel);
+
+} // namespace aureole::emission

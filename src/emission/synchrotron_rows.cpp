@@ -1,0 +1,197 @@
+#include "aureole/emission/synchrotron_rows.hpp"
+
+#include "aureole/base/constants.hpp"
+#include "aureole/base/parallel.hpp"
+#include "aureole/base/quadrature.hpp"
+#include "aureole/physics/synchrotron.hpp"
+
+#include <algorithm>
+#include <array>
+#include <cmath>
+
+namespace aureole::emission {
+
+namespace {
+
+/// Rice averages <b F(x/b)> and <b G(x/b) cos 2 phi> at one order, tabulated evenly in ln x. Below the table
+/// both rise as x^(1/3); above it they are zero.
+struct KernelTable {
+    static constexpr double first = -16, step = 0.1;
+    std::vector<double> log_total, ratio; // ln f, g/f
+
+    std::array<double, 2> at(double log_x) const {
+        if (log_x < first + step) {
+            const double f = std::exp(log_total.front() + (log_x - first) / 3);
+            return {f, f * ratio.front()};
+        }
+        const double place = (log_x - first) / step;
+        const auto cell = static_cast<std::size_t>(place);
+        if (cell + 2 >= log_total.size()) {
+            return {0, 0};
+        }
+        const double t = place - static_cast<double>(cell);
+        const double w0 = -t * (t - 1) * (t - 2) / 6;
+        const double w1 = (t + 1) * (t - 1) * (t - 2) / 2;
+        const double w2 = -(t + 1) * t * (t - 2) / 2;
+        const double w3 = (t + 1) * t * (t - 1) / 6;
+        const auto blend = [&](const std::vector<double>& v) {
+            return w0 * v[cell - 1] + w1 * v[cell] + w2 * v[cell + 1] + w3 * v[cell + 2];
+        };
+        const double f = std::exp(blend(log_total));
+        return {f, f * blend(ratio)};
+    }
+};
+
+constexpr double largest_x = 700; // F(700) is below the smallest double
+
+KernelTable kernel_table(double order) {
+    KernelTable table;
+    for (double log_x = KernelTable::first; log_x < std::log(largest_x); log_x += KernelTable::step) {
+        const auto pair = physics::mixed_field(std::exp(log_x), order);
+        if (!(pair.total > 0)) {
+            break;
+        }
+        table.log_total.push_back(std::log(pair.total));
+        table.ratio.push_back(pair.polarised / pair.total);
+    }
+    return table;
+}
+
+/// Orders of the table: close together near 1, where the tail of the kernel changes fastest.
+std::vector<double> table_orders() {
+    constexpr int intervals = 12;
+    std::vector<double> order;
+    for (int i = 0; i <= intervals; ++i) {
+        order.push_back(std::sin(0.5 * constants::pi * i / intervals));
+    }
+    order.back() = 1;
+    return order;
+}
+
+} // namespace
+
+double synchrotron_constant() {
+    return physics::synchrotron_power_constant / (4 * constants::pi);
+}
+
+SynchrotronRows synchrotron_rows(
+    const spectra::Basis& basis, double from, double to, bool polarised, const RunContext& context) {
+    SynchrotronRows rows;
+    rows.nodes = basis.nodes();
+    rows.stride = (basis.nodes() + 15) / 16 * 16;
+    rows.order = table_orders();
+    const auto lorentz = [](double kinetic) { return 1 + kinetic / constants::electron_rest_energy; };
+    const double log_gamma2_last = 2 * std::log(lorentz(basis.energy().back()));
+    rows.beyond = std::log(largest_x) + log_gamma2_last;
+    rows.first = rows.step * std::floor(from / rows.step - 1);
+    const double last = std::min(to, rows.beyond);
+    rows.tables = static_cast<std::size_t>(std::max(2.0, std::ceil((last - rows.first) / rows.step) + 2));
+
+    std::vector<KernelTable> kernel(rows.order.size());
+    for_each_block(context, kernel.size(), [&](std::size_t o) { kernel[o] = kernel_table(rows.order[o]); });
+
+    // Quadrature points of each interval, with what multiplies the kernel there.
+    struct Point {
+        std::size_t interval;
+        double log_gamma2;
+        std::array<double, 4> cubic;
+        std::array<double, 4> fallback;
+    };
+    constexpr int points_per_interval = 6;
+    const auto rule = gauss_legendre(points_per_interval);
+    std::vector<Point> points;
+    double largest = 0;
+    for (std::size_t j = 0; j < basis.intervals(); ++j) {
+        const double from_log = std::log(basis.energy()[j]);
+        const double half = 0.5 * (std::log(basis.energy()[j + 1]) - from_log);
+        for (std::size_t p = 0; p < rule.node.size(); ++p) {
+            const double place = from_log + half * (1 + rule.node[p]);
+            const double energy = std::exp(place);
+            const double factor = std::pow(energy, 1 - spectra::weighting) * half * rule.weight[p];
+            Point point{j, 2 * std::log(lorentz(energy)), basis.cubic(j, place), {}};
+            const auto hats = basis.hats(j, place);
+            const std::size_t inner = j - basis.stencil_start(j);
+            for (std::size_t s = 0; s < 4; ++s) {
+                point.cubic[s] *= factor;
+                point.fallback[s] = -point.cubic[s];
+                largest = std::max(largest, std::abs(point.cubic[s]));
+            }
+            point.fallback[inner] += factor * hats[0];
+            point.fallback[inner + 1] += factor * hats[1];
+            points.push_back(point);
+        }
+    }
+    rows.unit = largest;
+
+    const std::size_t all_rows = rows.order.size() * rows.tables;
+    rows.total.assign(all_rows * rows.stride, 0.0F);
+    rows.total_fallback.assign(all_rows * basis.intervals() * 4, 0.0F);
+    if (polarised) {
+        rows.polarised.assign(all_rows * rows.stride, 0.0F);
+        rows.polarised_fallback.assign(all_rows * basis.intervals() * 4, 0.0F);
+    }
+    const auto fill = [&](std::size_t row) {
+        const auto& table = kernel[row / rows.tables];
+        const double u = rows.first + rows.step * static_cast<double>(row % rows.tables);
+        const double flatten = std::exp(rows.tilt * u) / rows.unit;
+        std::vector<double> sums(2 * basis.nodes(), 0.0);
+        std::vector<double> fallback(2 * basis.intervals() * 4, 0.0);
+        for (const Point& point : points) {
+            const auto value = table.at(u - point.log_gamma2);
+            const std::size_t start = basis.stencil_start(point.interval);
+            for (std::size_t s = 0; s < basis.stencil_size(); ++s) {
+                sums[start + s] += value[0] * point.cubic[s];
+                sums[basis.nodes() + start + s] += value[1] * point.cubic[s];
+                fallback[4 * point.interval + s] += value[0] * point.fallback[s];
+                fallback[4 * (basis.intervals() + point.interval) + s] += value[1] * point.fallback[s];
+            }
+        }
+        for (std::size_t i = 0; i < basis.nodes(); ++i) {
+            rows.total[row * rows.stride + i] = static_cast<float>(flatten * sums[i]);
+            if (polarised) {
+                rows.polarised[row * rows.stride + i] = static_cast<float>(flatten * sums[basis.nodes() + i]);
+            }
+        }
+        for (std::size_t i = 0; i < 4 * basis.intervals(); ++i) {
+            rows.total_fallback[row * basis.intervals() * 4 + i] = static_cast<float>(flatten * fallback[i]);
+            if (polarised) {
+                rows.polarised_fallback[row * basis.intervals() * 4 + i] =
+                    static_cast<float>(flatten * fallback[4 * basis.intervals() + i]);
+            }
+        }
+    };
+    constexpr std::size_t rows_per_block = 64;
+    for_each_block(context, (all_rows + rows_per_block - 1) / rows_per_block, [&](std::size_t block) {
+        for (std::size_t row = block * rows_per_block; row < std::min(all_rows, (block + 1) * rows_per_block);
+             ++row) {
+            fill(row);
+        }
+    });
+    return rows;
+}
+
+OrderPlace order_place(const SynchrotronRows& rows, double order) {
+    OrderPlace place;
+    const auto& node = rows.order;
+    const double t = std::clamp(order, 0.0, 1.0);
+    if (t == node.front() || t == node.back()) {
+        place.first = t == node.front() ? 0 : node.size() - 1;
+        return place;
+    }
+    const auto above = std::upper_bound(node.begin(), node.end(), t);
+    const auto cell = static_cast<std::size_t>(above - node.begin()) - 1;
+    place.first = std::min(cell == 0 ? 0 : cell - 1, node.size() - 4);
+    place.count = 4;
+    for (std::size_t a = 0; a < 4; ++a) {
+        double weight = 1;
+        for (std::size_t b = 0; b < 4; ++b) {
+            if (b != a) {
+                weight *= (t - node[place.first + b]) / (node[place.first + a] - node[place.first + b]);
+            }
+        }
+        place.fraction[a] = static_cast<float>(weight);
+    }
+    return place;
+}
+
+} // namespace aureole::emission
