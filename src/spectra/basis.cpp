@@ -1,6 +1,7 @@
 #include "aureole/spectra/basis.hpp"
 
 #include "aureole/base/error.hpp"
+#include "aureole/spectra/unpack.hpp"
 
 #include <fmt/format.h>
 
@@ -110,16 +111,12 @@ double Basis::value(std::span<const float> weighted, double kinetic_energy) cons
 std::size_t Basis::negative_intervals(const float* weighted, std::size_t* found) const {
     std::size_t count = 0;
     const std::size_t last = intervals();
-    // A branch-free pass that vectorises: is any interval suspect at all?
-    int suspects = 0;
-    for (std::size_t j = 1; j + 1 < last; ++j) {
-        suspects += static_cast<int>(weighted[j] < left_ratio_[j] * weighted[j - 1]) |
-                    static_cast<int>(weighted[j + 1] < right_ratio_[j] * weighted[j + 2]);
-    }
+    const bool suspects =
+        last > 2 && any_below_ratio(weighted + 1, left_ratio_.data() + 1, right_ratio_.data() + 1, last - 2);
     for (std::size_t j = 0; j < last; ++j) {
         const bool one_sided = left_ratio_[j] < 0;
         if (!one_sided) {
-            if (suspects == 0) {
+            if (!suspects) {
                 j = last - 2;
                 continue;
             }

@@ -43,7 +43,23 @@ AUREOLE_HOT bool unpack_cells(const std::uint32_t* __restrict raw,
     return bad == 0;
 }
 
+AUREOLE_HOT int count_below_ratio(const float* __restrict node,
+                                  const float* __restrict left,
+                                  const float* __restrict right,
+                                  int count) {
+    int suspects = 0;
+    for (int j = 0; j < count; ++j) {
+        suspects += static_cast<int>(node[j] < left[j] * node[j - 1]) |
+                    static_cast<int>(node[j + 1] < right[j] * node[j + 2]);
+    }
+    return suspects;
+}
+
 } // namespace
+
+bool any_below_ratio(const float* node, const float* left, const float* right, std::size_t count) {
+    return count_below_ratio(node, left, right, static_cast<int>(count)) > 0;
+}
 
 bool unpack(const std::uint32_t* raw,
             std::size_t cells,

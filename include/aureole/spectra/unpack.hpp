@@ -18,4 +18,8 @@ bool unpack(const std::uint32_t* raw,
             std::size_t stride,
             std::uint64_t* word_sum);
 
+/// Whether, for any j < count, node[j] < left[j] node[j - 1] or node[j + 1] < right[j] node[j + 2]. node[-1]
+/// .. node[count + 1] must exist.
+bool any_below_ratio(const float* node, const float* left, const float* right, std::size_t count);
+
 } // namespace aureole::spectra

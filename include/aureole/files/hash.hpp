@@ -1,0 +1,13 @@
+#pragma once
+
+#include <cstdint>
+#include <string>
+#include <string_view>
+
+namespace aureole::files {
+
+/// FNV-1a, 64 bits (Fowler, Noll & Vo): to tell texts apart, not for security.
+std::uint64_t fnv1a(std::string_view text);
+std::string hex(std::uint64_t hash); ///< 16 digits
+
+} // namespace aureole::files

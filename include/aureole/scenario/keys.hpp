@@ -1,0 +1,51 @@
+#pragma once
+
+#include "aureole/base/units.hpp"
+
+#include <limits>
+#include <optional>
+#include <string>
+#include <string_view>
+#include <vector>
+
+namespace aureole::scenario {
+
+enum class Kind {
+    quantity, ///< number with a unit, as a string
+    number,
+    integer,
+    boolean,
+    text,
+    choice,        ///< one of Key::choices
+    formula,       ///< muParser text
+    path,          ///< relative to the scenario file
+    quantity_list, ///< list of quantities
+    choice_list,
+    text_list,
+};
+
+/// One key of a scenario: the reader, --set, the effective scenario and the reference page are made from it.
+struct Key {
+    std::string path; ///< dotted; "<name>" stands for a name the user chooses
+    Kind kind = Kind::number;
+    Dimension dimension;                                     ///< of quantities
+    double least = -std::numeric_limits<double>::infinity(); ///< CGS, inclusive
+    double greatest = std::numeric_limits<double>::infinity();
+    std::string otherwise; ///< default, as typed in TOML (texts without their quotes); empty: none
+    std::vector<std::string> choices;
+    std::string help; ///< one line
+};
+
+/// All keys, in the order of the reference page.
+const std::vector<Key>& keys();
+
+/// The key a dotted path names, with "<name>" matching any one part. Nothing if there is none.
+const Key* find_key(std::string_view path);
+
+/// The known key nearest to a path (fewest insertions, deletions, substitutions, swaps).
+std::string nearest_key(std::string_view path);
+
+/// Every key in a table, for docs/scenario.md.
+std::string reference_page();
+
+} // namespace aureole::scenario

@@ -1,0 +1,431 @@
+#include "aureole/scenario/keys.hpp"
+
+#include "aureole/base/constants.hpp"
+
+#include <fmt/format.h>
+#include <fmt/ranges.h>
+
+#include <algorithm>
+#include <cmath>
+#include <numeric>
+
+namespace aureole::scenario {
+
+namespace {
+
+constexpr double infinity = std::numeric_limits<double>::infinity();
+constexpr double tiny = 1e-300; // "above zero"
+
+const std::vector<std::string> profile_kinds{
+    "none", "constant", "double_exponential", "sech2", "gaussian", "beta", "power_law", "file", "formula"};
+
+Key quantity(std::string path,
+             const Dimension& dimension,
+             double least,
+             double greatest,
+             std::string otherwise,
+             std::string help) {
+    return {std::move(path), Kind::quantity,       dimension, least,
+            greatest,        std::move(otherwise), {},        std::move(help)};
+}
+
+Key number(std::string path, double least, double greatest, std::string otherwise, std::string help) {
+    return {std::move(path), Kind::number, {}, least, greatest, std::move(otherwise), {}, std::move(help)};
+}
+
+Key integer(std::string path, double least, double greatest, std::string otherwise, std::string help) {
+    return {std::move(path), Kind::integer, {}, least, greatest, std::move(otherwise), {}, std::move(help)};
+}
+
+Key boolean(std::string path, bool otherwise, std::string help) {
+    return {std::move(path), Kind::boolean, {}, -infinity, infinity, otherwise ? "true" : "false", {},
+            std::move(help)};
+}
+
+Key other(std::string path, Kind kind, std::string otherwise, std::string help) {
+    return {std::move(path), kind, {}, -infinity, infinity, std::move(otherwise), {}, std::move(help)};
+}
+
+Key choice(std::string path, std::vector<std::string> choices, std::string otherwise, std::string help) {
+    return {std::move(path),    Kind::choice,   {}, -infinity, infinity, std::move(otherwise),
+            std::move(choices), std::move(help)};
+}
+
+/// The keys of a spatial profile below `path`.
+void add_profile(std::vector<Key>& keys,
+                 const std::string& path,
+                 const Dimension& dimension,
+                 const std::string& kind,
+                 const std::string& value,
+                 const std::string& what) {
+    keys.push_back(choice(path + ".profile", profile_kinds, kind, "shape of " + what));
+    keys.push_back(
+        quantity(path + ".value", dimension, 0, infinity, value, "amplitude: the value at the centre"));
+    keys.push_back(
+        quantity(path + ".radius", dimension::length, tiny, infinity, "6 kpc", "radial scale length"));
+    keys.push_back(quantity(path + ".height", dimension::length, tiny, infinity, "1 kpc", "scale height"));
+    keys.push_back(quantity(path + ".core", dimension::length, tiny, infinity, "1 kpc",
+                            "core radius of beta and power_law"));
+    keys.push_back(number(path + ".slope", 0, 20, "1", "slope of beta and power_law"));
+    keys.push_back(quantity(path + ".flare", dimension::length, 0, infinity, "0 kpc",
+                            "the height grows as exp(R/flare); 0: it does not"));
+    keys.push_back(other(path + ".formula", Kind::formula, "",
+                         "expression in R, z, x, y, r (kpc) that multiplies the amplitude"));
+}
+
+void add_species(std::vector<Key>& keys,
+                 const std::string& name,
+                 const std::string& hdu,
+                 std::vector<std::string> local,
+                 const std::string& norm) {
+    keys.push_back(choice(name + ".source", {"none", "file", "closed_form", "energy_density"}, "closed_form",
+                          "where the spectra come from: " + hdu +
+                              " of input.grid, closed forms, or an energy density with a shape"));
+    keys.push_back(choice(name + ".spectrum", {"power_law", "broken_power_law", "local"}, "power_law",
+                          "shape against energy"));
+    const std::string first = local.front();
+    keys.push_back(choice(name + ".local", std::move(local), first,
+                          "published local interstellar spectrum, by author and year"));
+    keys.push_back(quantity(name + ".norm", dimension::spectral_density, 0, infinity, norm,
+                            "density per energy at reference_energy where the spatial profile is 1"));
+    keys.push_back(quantity(name + ".reference_energy", dimension::energy, tiny, infinity, "1 GeV",
+                            "kinetic energy of norm"));
+    keys.push_back(number(name + ".slope", -10, 20, "2.7", "N ~ T^-slope"));
+    keys.push_back(
+        quantity(name + ".break_energy", dimension::energy, tiny, infinity, "5 GeV", "of broken_power_law"));
+    keys.push_back(number(name + ".slope_above", -10, 20, "3.2", "slope above the break"));
+    keys.push_back(number(name + ".break_smoothness", 0.01, 10, "0.5", "width of the break in powers of e"));
+    keys.push_back(quantity(name + ".cutoff_energy", dimension::energy, 0, infinity, "0 GeV",
+                            "exponential cut-off; 0: none"));
+    keys.push_back(
+        quantity(name + ".energy_from", dimension::energy, tiny, infinity, "10 MeV", "first energy node"));
+    keys.push_back(quantity(name + ".energy_to", dimension::energy, tiny, infinity,
+                            name == "electrons" ? "100 TeV" : "1 PeV", "last energy node"));
+    keys.push_back(integer(name + ".energy_nodes", 4, 2000, "97", "energy nodes, even in the logarithm"));
+    keys.push_back(number(name + ".height_slope", -2, 2, "0",
+                          "the height of the spatial profile goes as (T/reference_energy)^height_slope"));
+    add_profile(keys, name + ".space", dimension::none, "double_exponential", "1",
+                "the spatial distribution");
+    add_profile(keys, name + ".energy_density", dimension::energy_density, "none", "0 eV cm-3",
+                "the energy density (source = energy_density)");
+}
+
+std::vector<Key> make_keys() {
+    using namespace dimension;
+    std::vector<Key> keys;
+    const auto add = [&](Key key) { keys.push_back(std::move(key)); };
+    add(other("run.title", Kind::text, "", "a line about the run, for headers and tables"));
+    add(other("run.object", Kind::text, "MODEL", "name of the galaxy, for headers"));
+
+    add(other("input.grid", Kind::path, "",
+              "HALO-GRID file with spectra and media; its grid replaces [grid]"));
+
+    add(choice("grid.geometry", {"RZ", "XYZ"}, "RZ", "axisymmetric or Cartesian"));
+    add(quantity("grid.radius", length, tiny, infinity, "20 kpc", "outer radius (RZ)"));
+    add(quantity("grid.half_width", length, tiny, infinity, "20 kpc", "half the width in x and y (XYZ)"));
+    add(quantity("grid.height", length, tiny, infinity, "15 kpc", "greatest distance from the plane"));
+    add(integer("grid.cells_r", 1, 100000, "64", "cells in radius (RZ)"));
+    add(integer("grid.cells_xy", 1, 10000, "64", "cells in x and in y (XYZ)"));
+    add(integer("grid.cells_z", 1, 100000, "64", "cells in height, from the plane to grid.height"));
+    add(quantity("grid.smallest_r", length, 0, infinity, "0 kpc",
+                 "width of the innermost cells; 0: all alike"));
+    add(quantity("grid.smallest_z", length, 0, infinity, "0.05 kpc",
+                 "height of the cells at the plane; 0: all alike"));
+    add(boolean("grid.mirror", true,
+                "the galaxy is the same on both sides of the plane: only z >= 0 is stored"));
+    add(integer("grid.sectors", 4, 4096, "32", "azimuth sectors of a ring for an ordered field (RZ)"));
+
+    add_profile(keys, "field.ordered", magnetic_field, "none", "0 uG", "the strength of the ordered field");
+    add(choice("field.ordered.direction", {"toroidal", "spiral", "vertical", "x_shaped", "components"},
+               "toroidal", "direction of the ordered field"));
+    add(quantity("field.ordered.pitch", angle, -constants::pi, constants::pi, "15 deg",
+                 "pitch angle of spiral and x_shaped"));
+    add(quantity("field.ordered.tilt", angle, -constants::pi, constants::pi, "60 deg",
+                 "angle to the plane far from it (x_shaped)"));
+    add(other("field.ordered.formula_x", Kind::formula, "0",
+              "direction along x, or R on an RZ grid (components)"));
+    add(other("field.ordered.formula_y", Kind::formula, "0",
+              "direction along y, or azimuth on an RZ grid (components)"));
+    add(other("field.ordered.formula_z", Kind::formula, "0", "direction along z (components)"));
+    add_profile(keys, "field.random", magnetic_field, "none", "0 uG",
+                "the rms of the three-dimensional random field");
+
+    add_profile(keys, "gas.hi", number_density, "none", "0 cm-3", "atomic gas, H nuclei");
+    add_profile(keys, "gas.h2", number_density, "none", "0 cm-3",
+                "molecular gas, H nuclei (twice the molecules)");
+    add_profile(keys, "gas.hii", number_density, "none", "0 cm-3", "ionised gas, H nuclei");
+    add_profile(keys, "gas.electrons", number_density, "none", "0 cm-3", "thermal electrons");
+    add_profile(keys, "gas.temperature", temperature, "none", "0 K", "temperature of the ionised gas");
+
+    add(boolean("radiation.cmb", true, "the cosmic microwave background"));
+    add(quantity("radiation.cmb_temperature", temperature, tiny, 1e9, "2.7255 K",
+                 "its temperature (Fixsen 2009, ApJ 707, 916)"));
+    add(quantity("radiation.component.<name>.temperature", temperature, tiny, 1e9, "4000 K",
+                 "of the diluted black body"));
+    add_profile(keys, "radiation.component.<name>", energy_density, "constant", "0 eV cm-3",
+                "its energy density");
+
+    add_profile(keys, "turbulence.speed", speed, "none", "0 km s-1", "the turbulent speed");
+    add_profile(keys, "turbulence.scale", length, "none", "0 kpc", "the outer scale of the turbulence");
+
+    add_species(keys, "electrons", "CR_ELECTRON, CR_POSITRON or CR_LEPTON", {"potgieter_2015"},
+                "1.2e-11 cm-3 GeV-1");
+    add_species(keys, "protons", "CR_PROTON", {"vos_potgieter_2015", "dermer_1986"}, "1.5e-9 cm-3 GeV-1");
+
+    add(boolean("emission.synchrotron", true, "synchrotron radiation"));
+    add(boolean("emission.inverse_compton", true, "inverse-Compton radiation"));
+    add(boolean("emission.bremsstrahlung", true, "bremsstrahlung"));
+    add(boolean("emission.pion_decay", true, "gamma rays from neutral pions"));
+    add(choice("emission.pion_model",
+               {"kafexhiu_2014_continuous", "kafexhiu_2014", "kafexhiu_2014_geant4", "kafexhiu_2014_sibyll",
+                "kafexhiu_2014_qgsjet", "kelner_2006"},
+               "kafexhiu_2014_continuous", "parametrisation of p + p -> gamma, by author and year"));
+    add(number("emission.nuclear_enhancement", 1, 10, "1.8",
+               "nuclei of beam and gas over p + p (Mori 2009, Astropart. Phys. 31, 341)"));
+    add(number("emission.helium_fraction", 0, 1, "0.1", "helium per hydrogen by number, for bremsstrahlung"));
+
+    add({"radio.frequencies",
+         Kind::quantity_list,
+         frequency,
+         1e6,
+         1e13,
+         "[]",
+         {},
+         "frequencies of the radio maps"});
+    add(quantity("radio.bandwidth", frequency, 0, 1e13, "0 GHz",
+                 "width of every radio channel; 0: a single frequency"));
+    add(choice("radio.unit", {"Jy/beam", "Jy/pixel", "MJy/sr", "K"}, "Jy/beam", "unit of the radio maps"));
+    add(quantity("radio.beam_major", angle, 0, 1, "0 deg",
+                 "full width at half maximum of the beam; 0: no beam"));
+    add(quantity("radio.beam_minor", angle, 0, 1, "0 deg", "the same across; 0: as beam_major"));
+    add(quantity("radio.beam_angle", angle, -7, 7, "0 deg",
+                 "position angle of the major axis, North through East"));
+    add({"gamma.energies",
+         Kind::quantity_list,
+         energy,
+         1e3 * constants::electronvolt,
+         1e14 * constants::electronvolt,
+         "[]",
+         {},
+         "photon energies of the gamma-ray maps, 1 keV to 100 TeV"});
+    add({"gamma.band_edges",
+         Kind::quantity_list,
+         energy,
+         1e3 * constants::electronvolt,
+         1e14 * constants::electronvolt,
+         "[]",
+         {},
+         "edges of neighbouring bands of the gamma-ray maps, in place of gamma.energies"});
+    add(choice("gamma.unit", {"cm-2 s-1 sr-1 MeV-1", "cm-2 s-1 sr-1 GeV-1"}, "cm-2 s-1 sr-1 MeV-1",
+               "unit of maps at single energies; bands are in cm-2 s-1 sr-1"));
+    add(quantity("gamma.beam_major", angle, 0, 1, "0 deg",
+                 "Gaussian smoothing of the gamma-ray maps, full width; 0: none"));
+
+    add(quantity("view.inclination", angle, 0, constants::pi, "90 deg", "0: face-on, 90 deg: edge-on"));
+    add(quantity("view.position_angle", angle, -7, 7, "270 deg",
+                 "of the galaxy's x axis, North through East"));
+    add(quantity("view.azimuth", angle, -7, 7, "0 deg", "turn of the galaxy about its axis"));
+    add(quantity("view.distance", length, tiny, infinity, "10 Mpc", "distance of the galaxy"));
+    add(quantity("view.distance_error", length, 0, infinity, "0 Mpc",
+                 "its error, carried to the scale heights"));
+    add(choice("view.projection", {"orthographic", "perspective"}, "orthographic",
+               "from infinity, or from the distance given"));
+    add(quantity("view.ra", angle, -7, 7, "0 deg", "right ascension of the centre"));
+    add(quantity("view.dec", angle, -constants::pi / 2, constants::pi / 2, "0 deg",
+                 "declination of the centre"));
+
+    add(quantity("map.pixel", angle, 0, 1, "0 deg",
+                 "pixel; 0: a quarter of the radio beam, or a 256th of the grid"));
+    add(quantity("map.width", angle, 0, 1, "0 deg", "extent in right ascension; 0: the whole grid"));
+    add(quantity("map.height", angle, 0, 1, "0 deg", "extent in declination; 0: the whole grid"));
+    add(number("map.tolerance", 1e-6, 0.1, "1e-3",
+               "relative error allowed to the total flux and to each pixel"));
+    add(boolean("map.separate", false, "a map for each process beside the totals"));
+    add(boolean("map.polarisation", false, "maps of Stokes Q and U (no Faraday rotation)"));
+    add(boolean("map.spectral_index", true,
+                "maps of the spectral index between neighbouring radio frequencies"));
+
+    add(integer("heights.strips", 1, 1000, "5", "strips along the major axis"));
+    add(quantity("heights.strip_width", length, 0, infinity, "0 kpc",
+                 "width of a strip; 0: so that the strips fill the middle half of the map"));
+    add(quantity("heights.bin", length, 0, infinity, "0 kpc",
+                 "height of a bin; 0: half the beam, or two pixels"));
+    add(quantity("heights.from", length, 0, infinity, "0 kpc",
+                 "least distance from the plane that is fitted"));
+    add(quantity("heights.to", length, 0, infinity, "0 kpc",
+                 "greatest distance from the plane; 0: where the map ends"));
+    keys.push_back({"heights.models",
+                    Kind::choice_list,
+                    {},
+                    -infinity,
+                    infinity,
+                    "[\"exponential\", \"gaussian\", \"two_exponential\"]",
+                    {"exponential", "gaussian", "sech2", "two_exponential", "two_gaussian"},
+                    "models tried; one is chosen for all maps (AICc)"});
+    add(choice("heights.inclination", {"forward", "naive"}, "forward",
+               "fit the inclined disc where the galaxy is not edge-on, or the edge-on model as it is"));
+    add(quantity("heights.disc_radius", length, 0, infinity, "0 kpc",
+                 "radial scale length of the inclined disc; 0: fitted"));
+    add({"heights.rms",
+         Kind::text_list,
+         {},
+         -infinity,
+         infinity,
+         "[]",
+         {},
+         "noise the errors stand for, one per radio frequency or one for all, such as \"10 uJy/beam\"; none: "
+         "noiseless"});
+    add(number("heights.calibration_error", 0, 1, "0.05", "widens the errors of amplitudes"));
+    add(choice("heights.sides", {"both", "each"}, "both", "fit both sides of the plane together, or each"));
+
+    add(boolean("accuracy.estimate", true, "estimate the numerical error from a coarser evaluation"));
+    return keys;
+}
+
+std::vector<std::string> parts_of(std::string_view path) {
+    std::vector<std::string> parts(1);
+    for (const char c : path) {
+        if (c == '.') {
+            parts.emplace_back();
+        } else {
+            parts.back() += c;
+        }
+    }
+    return parts;
+}
+
+/// Edits between two words: insertions, deletions, substitutions, swaps of neighbours (Damerau 1964, Comm.
+/// ACM 7, 171).
+std::size_t edits(std::string_view a, std::string_view b) {
+    std::vector<std::vector<std::size_t>> d(a.size() + 1, std::vector<std::size_t>(b.size() + 1));
+    for (std::size_t i = 0; i <= a.size(); ++i) {
+        for (std::size_t j = 0; j <= b.size(); ++j) {
+            if (i == 0 || j == 0) {
+                d[i][j] = i + j;
+                continue;
+            }
+            d[i][j] = std::min(
+                {d[i - 1][j] + 1, d[i][j - 1] + 1, d[i - 1][j - 1] + (a[i - 1] == b[j - 1] ? 0 : 1)});
+            if (i > 1 && j > 1 && a[i - 1] == b[j - 2] && a[i - 2] == b[j - 1]) {
+                d[i][j] = std::min(d[i][j], d[i - 2][j - 2] + 1);
+            }
+        }
+    }
+    return d[a.size()][b.size()];
+}
+
+std::string kind_text(const Key& key) {
+    switch (key.kind) {
+    case Kind::quantity:
+        return key.dimension == dimension::none
+                   ? "number"
+                   : describe(key.dimension).name.substr(describe(key.dimension).name.find(' ') + 1);
+    case Kind::number:
+        return "number";
+    case Kind::integer:
+        return "whole number";
+    case Kind::boolean:
+        return "true or false";
+    case Kind::choice:
+        return fmt::format("one of {}", fmt::join(key.choices, ", "));
+    case Kind::formula:
+        return "formula";
+    case Kind::path:
+        return "file";
+    case Kind::quantity_list:
+        return "list of " + describe(key.dimension).name.substr(describe(key.dimension).name.find(' ') + 1) +
+               " values";
+    case Kind::choice_list:
+        return fmt::format("list of {}", fmt::join(key.choices, ", "));
+    case Kind::text_list:
+        return "list of texts";
+    default:
+        return "text";
+    }
+}
+
+std::string bound_text(const Key& key, double bound) {
+    return key.dimension == dimension::none ? fmt::format("{:g}", bound)
+                                            : format_quantity(bound, key.dimension);
+}
+
+std::string range_text(const Key& key) {
+    std::string text;
+    if (key.least == tiny) {
+        text = "above 0";
+    } else if (std::isfinite(key.least)) {
+        text = "from " + bound_text(key, key.least);
+    }
+    if (std::isfinite(key.greatest)) {
+        text += (text.empty() ? "to " : " to ") + bound_text(key, key.greatest);
+    }
+    return text;
+}
+
+} // namespace
+
+const std::vector<Key>& keys() {
+    static const std::vector<Key> table = make_keys();
+    return table;
+}
+
+const Key* find_key(std::string_view path) {
+    const auto wanted = parts_of(path);
+    for (const Key& key : keys()) {
+        const auto parts = parts_of(key.path);
+        const bool same = parts.size() == wanted.size() &&
+                          std::equal(parts.begin(), parts.end(), wanted.begin(),
+                                     [](const std::string& pattern, const std::string& part) {
+                                         return pattern == part || (pattern == "<name>" && !part.empty());
+                                     });
+        if (same) {
+            return &key;
+        }
+    }
+    return nullptr;
+}
+
+std::string nearest_key(std::string_view path) {
+    std::string best;
+    std::size_t least = std::numeric_limits<std::size_t>::max();
+    if (path.size() > 200) {
+        path = path.substr(0, 200);
+    }
+    for (const Key& key : keys()) {
+        std::string candidate = key.path;
+        const auto name = candidate.find("<name>");
+        const auto wanted = parts_of(path);
+        if (name != std::string::npos && wanted.size() > 2) {
+            candidate.replace(name, 6, wanted[2]);
+        }
+        const std::size_t distance = edits(path, candidate);
+        if (distance < least) {
+            least = distance;
+            best = candidate;
+        }
+    }
+    return best;
+}
+
+std::string reference_page() {
+    std::string page = "# Scenario keys\n\nA scenario is a TOML file. Quantities are texts with units (`\"3 "
+                       "kpc\"`); units follow the grammar of the "
+                       "FITS standard. Every key below can also be given on the command line: `--set "
+                       "view.inclination=\"85 deg\"`. This page is "
+                       "made from the table that the reader uses.\n";
+    std::string section;
+    for (const Key& key : keys()) {
+        const std::string top = parts_of(key.path).front();
+        if (top != section) {
+            section = top;
+            page += fmt::format(
+                "\n## [{}]\n\n| key | value | range | default | meaning |\n|---|---|---|---|---|\n", section);
+        }
+        std::string otherwise = key.otherwise.empty() ? "" : key.otherwise;
+        page += fmt::format("| `{}` | {} | {} | {} | {} |\n", key.path, kind_text(key), range_text(key),
+                            otherwise.empty() ? "" : "`" + otherwise + "`", key.help);
+    }
+    return page;
+}
+
+} // namespace aureole::scenario

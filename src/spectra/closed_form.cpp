@@ -1,0 +1,180 @@
+#include "aureole/spectra/closed_form.hpp"
+
+#include "aureole/base/error.hpp"
+#include "aureole/base/parallel.hpp"
+#include "aureole/base/quadrature.hpp"
+#include "aureole/media/cell_average.hpp"
+#include "aureole/physics/published_spectra.hpp"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+
+namespace aureole::spectra {
+
+namespace {
+
+using scenario::ProfileSpec;
+using scenario::Scenario;
+
+/// Reader of spectra whose spatial part is one number per cell.
+Source separable(std::vector<float> amplitude,
+                 std::vector<double> weighted_shape,
+                 std::shared_ptr<const Basis> basis,
+                 Species species) {
+    Source source;
+    source.species = species;
+    source.basis = std::move(basis);
+    source.cells = amplitude.size();
+    source.name = key_of(species);
+    const auto cells = std::make_shared<const std::vector<float>>(std::move(amplitude));
+    const auto shape = std::make_shared<const std::vector<double>>(std::move(weighted_shape));
+    source.open = [cells, shape]() -> Source::Reader {
+        return [cells, shape](std::size_t first, std::size_t count, float* weighted, std::size_t stride) {
+            for (std::size_t c = 0; c < count; ++c) {
+                const auto value = static_cast<double>((*cells)[first + c]);
+                for (std::size_t i = 0; i < shape->size(); ++i) {
+                    weighted[c * stride + i] = static_cast<float>(value * (*shape)[i]);
+                }
+            }
+        };
+    };
+    return source;
+}
+
+/// Spectra whose spatial profile has another height at each energy: all averages are worked out once.
+Source with_changing_height(const ProfileSpec& space,
+                            double height_slope,
+                            double reference,
+                            const std::vector<double>& weighted_shape,
+                            std::shared_ptr<const Basis> basis,
+                            const grid::Grid& grid,
+                            Species species,
+                            const RunContext& context) {
+    const std::size_t nodes = basis->nodes();
+    const auto values = std::make_shared<std::vector<float>>(grid.stored_cells() * nodes);
+    for_each_block(context, grid.nz(), [&](std::size_t plane) {
+        for (std::size_t i = 0; i < nodes; ++i) {
+            ProfileSpec profile = space;
+            profile.height *= std::pow(basis->energy()[i] / reference, height_slope);
+            const auto average = media::cell_averages(profile, grid, plane, plane + 1, false);
+            for (std::size_t c = 0; c < average.size(); ++c) {
+                (*values)[(plane * grid.plane_cells() + c) * nodes + i] =
+                    static_cast<float>(average[c] * weighted_shape[i]);
+            }
+        }
+    });
+    Source source;
+    source.species = species;
+    source.basis = std::move(basis);
+    source.cells = grid.stored_cells();
+    source.name = key_of(species);
+    source.open = [values, nodes]() -> Source::Reader {
+        return [values, nodes](std::size_t first, std::size_t count, float* weighted, std::size_t stride) {
+            for (std::size_t c = 0; c < count; ++c) {
+                std::copy_n(values->data() + (first + c) * nodes, nodes, weighted + c * stride);
+            }
+        };
+    };
+    return source;
+}
+
+} // namespace
+
+std::string key_of(Species species) {
+    return species == Species::electrons ? "electrons" : "protons";
+}
+
+std::function<double(double)> spectral_shape(const Scenario& scenario, Species species) {
+    const std::string key = key_of(species);
+    const std::string kind = scenario.text(key + ".spectrum");
+    if (kind == "local") {
+        const std::string name = scenario.text(key + ".local");
+        if (species == Species::electrons) {
+            return physics::potgieter_2015_electrons;
+        }
+        return name == "dermer_1986" ? physics::dermer_1986_protons : physics::vos_potgieter_2015_protons;
+    }
+    const double reference = scenario.quantity(key + ".reference_energy");
+    const double slope = scenario.number(key + ".slope");
+    const double cutoff = scenario.quantity(key + ".cutoff_energy");
+    std::function<double(double)> unnormalised = [reference, slope](double t) {
+        return std::pow(t / reference, -slope);
+    };
+    if (kind == "broken_power_law") {
+        const double at = scenario.quantity(key + ".break_energy");
+        const double above = scenario.number(key + ".slope_above");
+        const double width = scenario.number(key + ".break_smoothness");
+        unnormalised = [reference, slope, at, above, width](double t) {
+            return std::pow(t / reference, -slope) *
+                   std::pow(1 + std::pow(t / at, 1 / width), -(above - slope) * width);
+        };
+    }
+    const double norm = unnormalised(reference);
+    return [unnormalised, norm, cutoff](double t) {
+        const double cut = cutoff > 0 ? std::exp(-t / cutoff) : 1;
+        return unnormalised(t) / norm * cut;
+    };
+}
+
+std::shared_ptr<const Basis> scenario_basis(const Scenario& scenario, Species species) {
+    const std::string key = key_of(species);
+    const double from = scenario.quantity(key + ".energy_from");
+    const double to = scenario.quantity(key + ".energy_to");
+    const auto nodes = static_cast<std::size_t>(scenario.integer(key + ".energy_nodes"));
+    if (!(to > from)) {
+        throw Error(ErrorKind::scenario,
+                    fmt::format("{}.energy_to: found an energy not above {}.energy_from", key, key));
+    }
+    std::vector<double> energy;
+    for (std::size_t i = 0; i < nodes; ++i) {
+        energy.push_back(from * std::pow(to / from, static_cast<double>(i) / static_cast<double>(nodes - 1)));
+    }
+    return std::make_shared<const Basis>(std::move(energy));
+}
+
+Source
+closed_form(const Scenario& scenario, const grid::Grid& grid, Species species, const RunContext& context) {
+    const std::string key = key_of(species);
+    const auto basis = scenario_basis(scenario, species);
+    const auto shape = spectral_shape(scenario, species);
+    const bool local = scenario.text(key + ".spectrum") == "local";
+    const double norm = local ? 1 : scenario.quantity(key + ".norm");
+    std::vector<double> weighted;
+    for (const double t : basis->energy()) {
+        weighted.push_back(norm * shape(t) * std::pow(t, weighting));
+    }
+    const ProfileSpec space = scenario.profile(key + ".space");
+    const double height_slope = scenario.number(key + ".height_slope");
+    if (height_slope != 0) {
+        return with_changing_height(space, height_slope, scenario.quantity(key + ".reference_energy"),
+                                    weighted, basis, grid, species, context);
+    }
+    return separable(media::cell_averages(space, grid, false, context), weighted, basis, species);
+}
+
+Source from_energy_density(std::vector<float> energy_density,
+                           std::function<double(double)> shape,
+                           std::shared_ptr<const Basis> basis,
+                           Species species) {
+    const auto rule = gauss_legendre(6);
+    const auto energy = basis->energy();
+    double total = 0; // integral of T N dT of the shape
+    for (std::size_t j = 0; j + 1 < energy.size(); ++j) {
+        total += integrate(
+            rule,
+            [&](double log_t) {
+                const double t = std::exp(log_t);
+                return t * t * shape(t);
+            },
+            std::log(energy[j]), std::log(energy[j + 1]));
+    }
+    std::vector<double> weighted;
+    for (const double t : energy) {
+        weighted.push_back(shape(t) / total * std::pow(t, weighting));
+    }
+    return separable(std::move(energy_density), weighted, std::move(basis), species);
+}
+
+} // namespace aureole::spectra
