@@ -20,7 +20,8 @@ struct WeightedPoints {
 };
 
 /// Gauss-Legendre rule of `points` >= 1 nodes, exact for polynomials up to degree 2 points - 1.
-/// Method     Newton iteration on P_n from the asymptotic zeros; nodes and weights to 2e-15 up to 100 points.
+/// Method     Newton iteration on P_n from the asymptotic zeros; nodes and weights to 2e-15 up to 100
+/// points.
 /// Source     Abramowitz & Stegun 1964, 25.4.29 and 22.16.6.
 inline QuadratureRule gauss_legendre(int points) {
     assert(points >= 1);
@@ -88,8 +89,8 @@ double integrate_pieces(const QuadratureRule& rule, Function&& f, std::span<cons
     return sum;
 }
 
-/// Nodes and weights of the rule repeated on the pieces between ascending `edges`: for integrands that share
-/// their nodes.
+/// Nodes and weights of the rule repeated on the pieces between ascending `edges`: for integrands that
+/// share their nodes.
 inline WeightedPoints composite_points(const QuadratureRule& rule, std::span<const double> edges) {
     WeightedPoints points;
     for (std::size_t piece = 1; piece < edges.size(); ++piece) {

@@ -40,13 +40,16 @@ struct Unit {
     Dimension dimension;
 };
 
-/// Reads a unit string in the grammar of the FITS Standard 4.0, section 4.3: products by blank, '.' or '*', '/' for division
-/// of what follows it, integer powers ("cm-2", "cm^-2", "cm**-2"), SI prefixes, case-sensitive. "" is dimensionless.
-/// Throws Error(input): what was found and the place of the first character that is not understood.
+/// Reads a unit string in the grammar of the FITS Standard 4.0, section 4.3: products by blank, '.' or '*', '/' for
+/// division by the one unit or bracket after it, integer powers ("cm-2", "cm^-2", "cm**-2"), SI prefixes, a power
+/// of ten in front ("10**-3 Jy"); case-sensitive. "" is dimensionless. What two readers may take differently
+/// ("erg/s cm2") is refused. Throws Error(input): what was found and the place of the first character that is not
+/// understood.
 Unit parse_unit(std::string_view text);
 
-/// CGS value of a quantity such as "3 kpc", "1e28 cm2 s-1" or "-15 deg". Numbers are read in the C locale.
-/// Throws Error(scenario) with what was found and, for a bare number or another dimension, an example of what is expected.
+/// CGS value, always finite, of a quantity such as "3 kpc", "1e28 cm2 s-1" or "-15 deg". Numbers are read in the C
+/// locale. Throws Error(scenario) with what was found and, for a bare number or another dimension, an example of
+/// what is expected.
 double to_cgs(std::string_view text, const Dimension& expected);
 
 /// Factor from `unit` to CGS. Throws Error(input) if its dimension is not `expected`.
@@ -58,8 +61,9 @@ struct DimensionText {
 };
 DimensionText describe(const Dimension& dimension);
 
-/// Writes a CGS value in the trade's unit of its dimension (kpc, GHz, GeV, uG, deg, ...) with the shortest digits
-/// that read back to the same double: "3 kpc".
+/// Writes a finite CGS value so that to_cgs reads back the same double, in whichever of the trade's units of its
+/// dimension (kpc, pc, Mpc; GHz, MHz; deg, arcsec; ...) makes it shortest: "3 kpc", "144 MHz".
+/// Throws Error(runtime) for a dimension that describe() has no name for.
 std::string format_quantity(double cgs, const Dimension& dimension);
 
 } // namespace aureole
