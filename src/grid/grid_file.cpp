@@ -11,6 +11,8 @@
 
 #include <algorithm>
 #include <cmath>
+#include <cstdio>
+#include <limits>
 
 namespace aureole::grid {
 
@@ -51,15 +53,22 @@ class HeaderCheck {
             }
         }
         check_together();
-        std::sort(problems_.begin(), problems_.end());
-        problems_.erase(std::unique(problems_.begin(), problems_.end()), problems_.end());
-        if (!problems_.empty()) {
-            throw Error(ErrorKind::input, fmt::format("{}", fmt::join(problems_, "\n")));
-        }
+        throw_problems();
         return std::move(file_);
     }
 
   private:
+    void throw_problems() const {
+        std::vector<std::string> once; // a doubled HDU is met at several places
+        for (const std::string& text : problems_) {
+            if (std::find(once.begin(), once.end(), text) == once.end()) {
+                once.push_back(text);
+            }
+        }
+        if (!once.empty()) {
+            throw Error(ErrorKind::input, fmt::format("{}", fmt::join(once, "\n")));
+        }
+    }
     void problem(const std::string& hdu, const std::string& what) {
         problems_.push_back(hdu.empty() ? fmt::format("{}: {}", file_.path, what)
                                         : fmt::format("{}: HDU {}: {}", file_.path, hdu, what));
@@ -82,7 +91,7 @@ class HeaderCheck {
         const auto name = reader_.text(primary, "FMTNAME");
         if (name != "HALO-GRID") {
             throw Error(ErrorKind::input,
-                        fmt::format("{}: primary header: FMTNAME: found {}, expected 'HALO-GRID'", file_.path,
+                        fmt::format("{}: HDU PRIMARY: FMTNAME: found {}, expected 'HALO-GRID'", file_.path,
                                     name ? "'" + *name + "'" : "none"));
         }
         file_.version = reader_.text(primary, "FMTVERS").value_or("");
@@ -96,7 +105,7 @@ class HeaderCheck {
             throw Error(
                 ErrorKind::input,
                 fmt::format(
-                    "{}: primary header: FMTVERS: found '{}', expected version 1 (this program reads 1.0)",
+                    "{}: HDU PRIMARY: FMTVERS: found '{}', expected version 1 (this program reads 1.0)",
                     file_.path, file_.version));
         } else if (minor > 0) {
             file_.warnings.push_back(fmt::format(
@@ -107,9 +116,9 @@ class HeaderCheck {
         if (geometry == "RZ" || geometry == "XYZ") {
             file_.grid.geometry = geometry == "RZ" ? Geometry::rz : Geometry::xyz;
         } else {
-            throw Error(ErrorKind::input,
-                        fmt::format("{}: primary header: GEOMETRY: found {}, expected 'XYZ' or 'RZ'",
-                                    file_.path, geometry ? "'" + *geometry + "'" : "none"));
+            problem("PRIMARY", fmt::format("GEOMETRY: found {}, expected 'XYZ' or 'RZ'",
+                                           geometry ? "'" + *geometry + "'" : "none"));
+            throw_problems(); // without it nothing else can be judged
         }
         attempt("PRIMARY", [&] { file_.grid.mirrored = reader_.flag(primary, "ZMIRROR").value_or(false); });
         attempt("PRIMARY", [&] { file_.field_parity = reader_.text(primary, "BPARITY").value_or(""); });
@@ -129,6 +138,15 @@ class HeaderCheck {
                name == "FREQUENCY";
     }
 
+    static double bunit_factor(const std::string& unit, const Dimension& dimension) {
+        try {
+            return unit_factor(unit, dimension);
+        } catch (Error& error) {
+            error.in("BUNIT");
+            throw;
+        }
+    }
+
     std::vector<double> axis_values(const std::string& name, const Dimension& dimension) {
         const HduInfo* hdu = reader_.find(name);
         if (hdu == nullptr) {
@@ -144,12 +162,17 @@ class HeaderCheck {
             problem(name, fmt::format("BUNIT: missing, expected a unit of {}", describe(dimension).name));
             return {};
         }
+        const double factor = bunit_factor(*unit, dimension);
         auto values = reader_.read_all(*hdu);
-        const double factor = unit_factor(*unit, dimension);
         for (std::size_t i = 0; i < values.size(); ++i) {
             values[i] *= factor;
             if (!std::isfinite(values[i])) {
                 problem(name, fmt::format("value {}: found {}, expected a finite number", i + 1, values[i]));
+                return {};
+            }
+            if (i == 0 && !name.ends_with("_EDGES") && !(values[i] > 0)) {
+                problem(name, fmt::format("value 1: found {:g} {}, expected more than 0", values[i] / factor,
+                                          *unit));
                 return {};
             }
             if (i > 0 && !(values[i] > values[i - 1])) {
@@ -174,8 +197,7 @@ class HeaderCheck {
             attempt("", [&] { validate(file_.grid); });
         }
         if (problems_.size() != before) {
-            // Without a grid nothing else can be judged.
-            throw Error(ErrorKind::input, fmt::format("{}", fmt::join(problems_, "\n")));
+            throw_problems(); // without a grid nothing else can be judged
         }
         warn_of_steps(rz ? "R_EDGES" : "X_EDGES", file_.grid.x);
         warn_of_steps("Y_EDGES", file_.grid.y);
@@ -205,41 +227,63 @@ class HeaderCheck {
                 continue;
             }
             attempt(hdu.name, [&] {
-                auto values = axis_values(hdu.name, dimension::energy);
-                const std::string kind = reader_.text(hdu, "EKIND").value_or("KINETIC");
-                if (kind == "TOTAL") {
-                    const double rest = hdu.name == "E_LEPTON" ? constants::electron_rest_energy
-                                                               : constants::proton_rest_energy;
-                    for (double& value : values) {
-                        value -= rest;
-                    }
-                } else if (kind != "KINETIC" && kind != "PER_NUCLEON") {
-                    problem(
-                        hdu.name,
-                        fmt::format("EKIND: found '{}', expected 'KINETIC', 'TOTAL' or 'PER_NUCLEON'", kind));
-                }
-                if (!values.empty() && !(values.front() > 0)) {
-                    problem(hdu.name,
-                            fmt::format("found a first energy of {:g} GeV ({}), expected more than 0",
-                                        values.front() / constants::gigaelectronvolt, kind));
+                auto values = kinetic_energies(hdu);
+                if (values.empty()) {
                     return;
                 }
-                if (values.size() < 2 && !values.empty()) {
+                if (values.size() < 2) {
                     problem(hdu.name, "found one energy node, expected at least 2");
                     return;
                 }
-                if (values.size() >= 2) {
-                    const double per_decade =
-                        static_cast<double>(values.size() - 1) / std::log10(values.back() / values.front());
-                    if (per_decade < 4) {
-                        file_.warnings.push_back(fmt::format(
-                            "{}: HDU {}: found {:.2g} nodes per decade, expected 4 or more; spectra between "
-                            "them are guesses",
-                            file_.path, hdu.name, per_decade));
-                    }
-                }
+                warn_of_few_nodes(hdu.name, values);
                 file_.axes[hdu.name] = std::move(values);
             });
+        }
+    }
+
+    /// Energies of an axis, turned to kinetic ones as EKIND says; empty where there is a problem.
+    std::vector<double> kinetic_energies(const HduInfo& hdu) {
+        auto values = axis_values(hdu.name, dimension::energy);
+        const auto kind = reader_.text(hdu, "EKIND").value_or("KINETIC");
+        const bool particles = hdu.name != "EPS_PHOTON" && hdu.name != "E_GAMMA";
+        const bool known = kind == "KINETIC" || (particles && kind == "TOTAL") ||
+                           (particles && hdu.name != "E_LEPTON" && kind == "PER_NUCLEON");
+        if (!known) {
+            problem(hdu.name, fmt::format("EKIND: found '{}', expected 'KINETIC'{}", kind,
+                                          hdu.name == "E_LEPTON" ? " or 'TOTAL'"
+                                          : particles            ? ", 'TOTAL' or 'PER_NUCLEON'"
+                                                                 : ""));
+            return {};
+        }
+        if (kind != "TOTAL" || values.empty()) {
+            return values;
+        }
+        constexpr double helium_rest_energy = 3.7273794066 * constants::gigaelectronvolt; // CODATA 2018
+        const double rest = hdu.name == "E_LEPTON"   ? constants::electron_rest_energy
+                            : hdu.name == "E_HELIUM" ? helium_rest_energy
+                                                     : constants::proton_rest_energy;
+        for (double& value : values) {
+            value -= rest;
+        }
+        if (!(values.front() > 0)) {
+            problem(hdu.name,
+                    fmt::format("value 1: found a total energy of {:g} GeV, expected more than the rest "
+                                "energy of {:g} GeV",
+                                (values.front() + rest) / constants::gigaelectronvolt,
+                                rest / constants::gigaelectronvolt));
+            return {};
+        }
+        return values;
+    }
+
+    void warn_of_few_nodes(const std::string& name, const std::vector<double>& values) {
+        const double per_decade =
+            static_cast<double>(values.size() - 1) / std::log10(values.back() / values.front());
+        if (per_decade < 4) {
+            file_.warnings.push_back(
+                fmt::format("{}: HDU {}: found {:.2g} nodes per decade, expected 4 or more; "
+                            "spectra between them are guesses",
+                            file_.path, name, per_decade));
         }
     }
 
@@ -316,14 +360,7 @@ class HeaderCheck {
             problem(hdu.name, fmt::format("BUNIT: missing, expected {}, as in '{}'",
                                           describe(known->dimension).name, known->example_unit));
         } else {
-            attempt(hdu.name, [&] {
-                try {
-                    unit_factor(*unit, known->dimension);
-                } catch (Error& error) {
-                    error.in("BUNIT");
-                    throw;
-                }
-            });
+            attempt(hdu.name, [&] { bunit_factor(*unit, known->dimension); });
         }
         if (known->first_axis == "COMP") {
             const std::string components = rz ? "R,PHI,Z" : "X,Y,Z";
@@ -343,7 +380,29 @@ class HeaderCheck {
             {hdu.name, hdu.number, axes, hdu.shape, unit.value_or(""), hdu.bitpix, hdu.compressed});
     }
 
+    /// Axes that nothing uses are told of, as every HDU that is not read.
+    void warn_of_unused_axes() {
+        for (const HduInfo& hdu : reader_.hdus()) {
+            if (hdu.number == 1 || !is_axis(hdu.name)) {
+                continue;
+            }
+            const bool edges = hdu.name.ends_with("_EDGES");
+            const bool used =
+                edges ? axis_length(hdu.name.substr(0, hdu.name.size() - 6)) > 0 &&
+                            (hdu.name == "Z_EDGES" ||
+                             (hdu.name == "R_EDGES") == (file_.grid.geometry == Geometry::rz))
+                      : std::any_of(file_.data.begin(), file_.data.end(), [&](const DataHdu& data) {
+                            return std::find(data.axes.begin(), data.axes.end(), hdu.name) != data.axes.end();
+                        });
+            if (!used) {
+                file_.warnings.push_back(
+                    fmt::format("{}: HDU {}: no data use it, ignored", file_.path, hdu.name));
+            }
+        }
+    }
+
     void check_together() {
+        warn_of_unused_axes();
         if (file_.grid.mirrored && file_.has("B_VECTOR") && file_.field_parity.empty()) {
             problem("B_VECTOR", "found on a mirrored grid (ZMIRROR = T) without BPARITY, expected 'EVEN' or "
                                 "'ODD' in the primary header");
@@ -437,16 +496,22 @@ void read_planes(const GridFile& file,
     const HduInfo& hdu = *reader.find(name);
     const double factor = unit_factor(data.unit, dimension);
     const std::size_t plane = file.grid.plane_cells() * per_cell;
-    std::vector<float> values(plane);
+    std::vector<double> values(plane);
     for (std::size_t k = 0; k < file.grid.nz(); ++k) {
         reader.read(hdu, k * plane, plane, values.data());
         for (std::size_t v = 0; v < plane; ++v) {
-            const double value = static_cast<double>(values[v]) * factor;
+            const double value = values[v] * factor;
             if (!std::isfinite(value) || (value < 0 && !allow_negative)) {
                 throw Error(ErrorKind::input,
                             fmt::format("{}: HDU {}: {}: found {}, expected a finite value{}", file.path,
                                         name, cell_text(file.grid, (k * plane + v) / per_cell), values[v],
                                         allow_negative ? "" : " that is not negative"));
+            }
+            if (std::abs(value) > std::numeric_limits<float>::max()) {
+                throw Error(ErrorKind::input,
+                            fmt::format("{}: HDU {}: {}: found {} {}, expected a value below 3e38 in CGS",
+                                        file.path, name, cell_text(file.grid, (k * plane + v) / per_cell),
+                                        values[v], data.unit));
             }
             store(k * plane + v, value);
         }

@@ -44,7 +44,8 @@ Grid coarsened(const Grid& grid);
 std::vector<std::size_t> coarse_cell(const Grid& grid);
 
 /// Edges 0..extent (or -extent..extent if two_sided), `cells` in all, whose widths grow geometrically from `smallest` at 0.
-/// smallest = 0 or >= extent/cells gives even cells.
+/// smallest = 0, or not below the width of even cells, gives even cells. Two-sided edges are symmetric to the bit; an odd number of cells has one
+/// centred on 0. Throws Error(scenario) unless extent > 0, cells >= 1 and smallest >= 0.
 std::vector<double> stretched_edges(double extent, std::size_t cells, double smallest, bool two_sided);
 
 } // namespace aureole::grid

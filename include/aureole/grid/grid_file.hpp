@@ -50,8 +50,10 @@ GridFile open_grid_file(const std::string& path);
 struct GridFileContents {
     struct Range {
         std::string hdu, unit;
-        double least = 0, greatest = 0, total = 0; ///< total: integral over the volume of what is stored, CGS
-        bool has_total = false;
+        double least = 0, greatest = 0; ///< in `unit`; vectors: of their length
+        double total =
+            0; ///< integral over the volume of what is stored, CGS; spectra: of T N dT between the nodes
+        std::string total_text; ///< what the total counts: "erg", "H nuclei"; empty: no total
     };
     std::vector<Range> ranges;
     std::vector<std::string> problems, warnings;
