@@ -11,6 +11,22 @@ typedef float Lanes __attribute__((vector_size(64), aligned(4), may_alias));
 
 constexpr std::size_t cell_group = 6; // 6 x 16 sums fill the registers of AVX2, and do no harm elsewhere
 
+inline __attribute__((always_inline)) const Lanes& lanes(const float* at) {
+    return *reinterpret_cast<const Lanes*>(at);
+}
+
+inline __attribute__((always_inline)) float lane_sum(const Lanes& v) {
+    const float* a = reinterpret_cast<const float*>(&v);
+    float eight[8], four[4];
+    for (int i = 0; i < 8; ++i) {
+        eight[i] = a[i] + a[i + 8];
+    }
+    for (int i = 0; i < 4; ++i) {
+        four[i] = eight[i] + eight[i + 4];
+    }
+    return (four[0] + four[2]) + (four[1] + four[3]);
+}
+
 inline __attribute__((always_inline)) void products_body(const float* __restrict weights,
                                                          std::size_t rows,
                                                          const float* __restrict spectra,
@@ -66,24 +82,29 @@ inline __attribute__((always_inline)) void interpolated_body(const RowTable& row
     for (std::size_t c = 0; c < channels; ++c) {
         const float* row = rows.value + first_order * order_step + static_cast<std::size_t>(table[c]) * nodes;
         Lanes sum{};
-        for (std::size_t i = 0; i < nodes; i += 16) {
-            Lanes weight{};
-            for (std::size_t o = 0; o < orders; ++o) {
-                const float* at = row + o * order_step + i;
-                const Lanes low = *reinterpret_cast<const Lanes*>(at);
-                const Lanes high = *reinterpret_cast<const Lanes*>(at + nodes);
-                weight += (low + (high - low) * along[c]) * fraction[o];
+        if (orders == 4) {
+            const float high0 = fraction[0] * along[c], low0 = fraction[0] - high0;
+            const float high1 = fraction[1] * along[c], low1 = fraction[1] - high1;
+            const float high2 = fraction[2] * along[c], low2 = fraction[2] - high2;
+            const float high3 = fraction[3] * along[c], low3 = fraction[3] - high3;
+            for (std::size_t i = 0; i < nodes; i += 16) {
+                const float* at = row + i;
+                Lanes even = lanes(at) * low0 + lanes(at + nodes) * high0;
+                at += order_step;
+                Lanes odd = lanes(at) * low1 + lanes(at + nodes) * high1;
+                at += order_step;
+                even += lanes(at) * low2 + lanes(at + nodes) * high2;
+                at += order_step;
+                odd += lanes(at) * low3 + lanes(at + nodes) * high3;
+                sum += (even + odd) * lanes(spectrum + i);
             }
-            sum += weight * *reinterpret_cast<const Lanes*>(spectrum + i);
-        }
-        float total = 0;
-        for (int half = 8; half > 0; half /= 2) {
-            for (int lane = 0; lane < half; ++lane) {
-                sum[lane] += sum[lane + half];
+        } else {
+            const float high = fraction[0] * along[c], low = fraction[0] - high;
+            for (std::size_t i = 0; i < nodes; i += 16) {
+                sum += (lanes(row + i) * low + lanes(row + i + nodes) * high) * lanes(spectrum + i);
             }
         }
-        total += sum[0];
-        out[c] = total;
+        out[c] = lane_sum(sum);
     }
 }
 

@@ -119,11 +119,14 @@ FieldSeen field_seen(const media::Field& field,
     seen.order = seen.across > 0 ? b2 / (b2 + random) : 0;
     const double right = dot(b, orientation.right);
     const double up = dot(b, orientation.up);
-    if (right * right + up * up > 0) {
-        // E is perpendicular to B: chi = PA(B) + 90 deg, so cos 2chi = -cos 2PA(B).
-        const double angle = orientation.right_angle + std::atan2(up, right);
-        seen.cos2chi = -std::cos(2 * angle);
-        seen.sin2chi = -std::sin(2 * angle);
+    const double norm = right * right + up * up;
+    if (norm > 0) {
+        // Twice the position angle of B is twice that of `right` plus twice the angle from `right`; E is
+        // perpendicular to B, so both cosine and sine turn their sign.
+        const double c = (right * right - up * up) / norm;
+        const double s = 2 * right * up / norm;
+        seen.cos2chi = -(c * orientation.cos_double_angle - s * orientation.sin_double_angle);
+        seen.sin2chi = -(s * orientation.cos_double_angle + c * orientation.sin_double_angle);
     }
     return seen;
 }

@@ -1,1 +1,5 @@
-int main() { return 0; }
+#include "aureole/app/command_line.hpp"
+
+int main(int argc, char** argv) {
+    return aureole::app::run(argc, argv);
+}

@@ -25,24 +25,38 @@ struct Sample {
     double place, weight; // weights sum to the length of the axis
 };
 
-/// Gauss-Legendre points on [from, to] in panels of at most `panel`, with a break at 0.
-std::vector<Sample> axis_samples(double from, double to, double panel) {
+/// Gauss-Legendre points on [from, to], which has 0 on its rim or outside, in panels of at most `panel` at
+/// the end nearest to 0, each 1.25 times the one before: shapes fall away from 0, so that far panels weigh
+/// little.
+void add_one_side(double from, double to, double panel, std::vector<Sample>& samples) {
     static const auto rule = gauss_legendre(3);
-    std::vector<double> ends{from, to};
-    if (from < 0 && to > 0) {
-        ends.insert(ends.begin() + 1, 0.0);
+    constexpr double growth = 1.25;
+    std::vector<double> widths;
+    double sum = 0;
+    for (double width = panel; sum < to - from; width *= growth) {
+        widths.push_back(width);
+        sum += width;
     }
-    std::vector<Sample> samples;
-    for (std::size_t e = 0; e + 1 < ends.size(); ++e) {
-        const double length = ends[e + 1] - ends[e];
-        const auto panels = static_cast<int>(std::clamp(std::ceil(length / panel), 1.0, 64.0));
-        for (int p = 0; p < panels; ++p) {
-            const double half = 0.5 * length / panels;
-            const double middle = ends[e] + (2 * p + 1) * half;
-            for (std::size_t q = 0; q < rule.node.size(); ++q) {
-                samples.push_back({middle + half * rule.node[q], half * rule.weight[q]});
-            }
+    const bool falling = from >= 0;
+    const double shrink = (to - from) / sum;
+    double place = falling ? from : to;
+    for (const double width : widths) {
+        const double half = 0.5 * shrink * width * (falling ? 1 : -1);
+        for (std::size_t q = 0; q < rule.node.size(); ++q) {
+            samples.push_back({place + half * (1 + rule.node[q]), std::abs(half) * rule.weight[q]});
         }
+        place += 2 * half;
+    }
+}
+
+/// The same with a break at 0.
+std::vector<Sample> axis_samples(double from, double to, double panel) {
+    std::vector<Sample> samples;
+    if (from < 0 && to > 0) {
+        add_one_side(from, 0, panel, samples);
+        add_one_side(0, to, panel, samples);
+    } else {
+        add_one_side(from, to, panel, samples);
     }
     return samples;
 }
@@ -81,9 +95,14 @@ Scales scales_of(const ProfileSpec& profile) {
     case ProfileKind::sech2:
     case ProfileKind::gaussian:
         return {profile.radius, profile.height};
-    case ProfileKind::beta:
-    case ProfileKind::power_law:
-        return {profile.core, profile.core};
+    case ProfileKind::beta: {
+        const double scale = profile.core / std::max(1.0, 1.5 * profile.slope);
+        return {scale, scale};
+    }
+    case ProfileKind::power_law: {
+        const double scale = profile.core / std::max(1.0, profile.slope);
+        return {scale, scale};
+    }
     default:
         return {everywhere, everywhere};
     }
@@ -235,6 +254,12 @@ std::vector<double> cell_averages(const ProfileSpec& profile,
                                   std::size_t last_plane,
                                   bool allow_negative) {
     std::vector<double> result;
+    if (profile.kind == ProfileKind::file) {
+        throw Error(ErrorKind::scenario,
+                    fmt::format("{}.profile: found \"file\", but no HDU holds it; expected a "
+                                "shape or a formula",
+                                profile.key));
+    }
     if (profile.kind == ProfileKind::formula) {
         result = formula_averages(profile, grid, first_plane, last_plane, allow_negative);
     } else {

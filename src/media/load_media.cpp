@@ -154,9 +154,21 @@ std::vector<std::array<float, 3>> ordered_field(const Loader& from) {
     return result;
 }
 
+/// A vertical field goes on through the plane, all the other directions mirror.
+Parity field_parity(const Loader& from) {
+    const bool of_file = from.scenario.profile("field.ordered").kind == ProfileKind::file ||
+                         !from.scenario.is_set("field.ordered.profile");
+    if (of_file && from.in_file("B_VECTOR")) {
+        return from.file->field_parity == "ODD" ? Parity::odd : Parity::even;
+    }
+    return from.scenario.text("field.ordered.direction") == "vertical" ? Parity::odd : Parity::even;
+}
+
 std::vector<Radiation> radiation(const Loader& from) {
     std::vector<Radiation> fields;
-    const double cmb_temperature = from.scenario.quantity("radiation.cmb_temperature");
+    const bool from_file = from.file != nullptr && !from.scenario.is_set("radiation.cmb_temperature");
+    const double cmb_temperature =
+        from_file ? from.file->cmb_temperature : from.scenario.quantity("radiation.cmb_temperature");
     const bool cmb_in_file =
         from.file != nullptr && from.file->radiation_includes_cmb && from.in_file("RADIATION");
     if (from.scenario.boolean("radiation.cmb") && !cmb_in_file) {
@@ -195,8 +207,7 @@ Media load_media(const Scenario& scenario,
     Media media;
     media.field.ordered = ordered_field(from);
     media.field.random_rms = from.scalar("field.random", "B_TURB", dimension::magnetic_field);
-    const std::string parity = file != nullptr && from.in_file("B_VECTOR") ? file->field_parity : "EVEN";
-    media.field.parity = parity == "ODD" ? Parity::odd : Parity::even;
+    media.field.parity = field_parity(from);
     media.gas.hi = from.scalar("gas.hi", "GAS_HI", dimension::number_density);
     media.gas.h2 = from.scalar("gas.h2", "GAS_H2", dimension::number_density);
     media.gas.hii = from.scalar("gas.hii", "GAS_HII", dimension::number_density);

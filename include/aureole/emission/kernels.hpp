@@ -28,6 +28,7 @@ struct RowTable {
     std::size_t tables, nodes;
 };
 
+/// orders is 1 or 4.
 /// out[c] = sum_i spectrum[i] sum_o fraction[o] ((1 - along[c]) row(first_order + o, table[c])[i] + along[c]
 /// row(first_order + o, table[c] + 1)[i])
 void interpolated_products(const RowTable& rows,

@@ -21,11 +21,13 @@ namespace aureole::media {
 double profile_shape(const scenario::ProfileSpec& profile, double radius, double height);
 
 /// Averages over stored cells `first_plane` .. `last_plane` - 1 (z planes) of amplitude x shape, integrals
-/// over the cell and not centre samples: Gauss-Legendre with 3 points per axis in panels no longer than half
-/// the scale in that direction, split at z = 0. A formula is refined by halving until its average is stable
-/// to 1e-4 (at most 4 times). Result [cells of these planes], in CGS of the profile's value. Throws
+/// over the cell and not centre samples: Gauss-Legendre with 3 points per axis in panels that start at half
+/// the scale length at the end nearest to the centre and grow by a quarter each, split at 0; for the steep
+/// ends of beta and power_law the scale is the core over the logarithmic slope. Accuracy 1e-8 (exponentials),
+/// 1e-6 (sech2, gaussian, beta) however thick the cell. A formula is refined by halving until its average is
+/// stable to 1e-4 (at most 4 times). Result [cells of these planes], in CGS of the profile's value. Throws
 /// Error(scenario) naming the key and the place where a formula is not finite, or negative where
-/// `allow_negative` is false.
+/// `allow_negative` is false, and for a profile of kind `file`.
 std::vector<double> cell_averages(const scenario::ProfileSpec& profile,
                                   const grid::Grid& grid,
                                   std::size_t first_plane,

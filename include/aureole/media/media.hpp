@@ -58,4 +58,7 @@ Media load_media(const scenario::Scenario& scenario,
                  const grid::GridFile* file,
                  const RunContext& context);
 
+/// Averages over the cells of grid::coarsened(fine), weighted with volume.
+Media coarsened(const Media& media, const grid::Grid& fine);
+
 } // namespace aureole::media

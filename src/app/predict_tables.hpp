@@ -1,0 +1,33 @@
+#pragma once
+
+#include "predict_heights.hpp"
+
+#include "aureole/files/run_folder.hpp"
+
+#include <string>
+#include <vector>
+
+namespace aureole::app {
+
+/// channels.ecsv, profiles.ecsv, heights.ecsv, exponents.ecsv and summary.json (docs/results.md).
+void write_tables(files::RunFolder& folder,
+                  const scenario::Scenario& scenario,
+                  const MapSettings& settings,
+                  const std::vector<MapProduct>& products,
+                  const PredictedHeights& heights,
+                  const std::vector<std::string>& warnings,
+                  const std::string& hash,
+                  const std::string& command);
+
+/// What a person wants to see at the end of a run.
+std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
+                                       const MapSettings& settings,
+                                       const std::vector<MapProduct>& products,
+                                       const emission::EmissionReport& report,
+                                       const PredictedHeights& heights,
+                                       const std::string& folder);
+
+/// What the predictions leave out, for the summary and the documentation.
+std::vector<std::string> left_out();
+
+} // namespace aureole::app
