@@ -17,18 +17,18 @@ std::string yaml_text(const std::string& text) {
         if (c == '"' || c == '\\') {
             quoted += '\\';
         }
-        quoted += c == '\n' ? ' ' : c;
+        quoted += static_cast<unsigned char>(c) < 0x20 ? ' ' : c;
     }
     return quoted + '"';
 }
 
 std::string cell_text(const std::string& text) {
-    if (!text.empty() && text.find_first_of(" ,\"\n") == std::string::npos) {
+    if (!text.empty() && text.find_first_of(" ,\"#\t\n\r") == std::string::npos) {
         return text;
     }
     std::string quoted = "\"";
     for (const char c : text) {
-        quoted += c;
+        quoted += static_cast<unsigned char>(c) < 0x20 ? ' ' : c; // a row is one line
         if (c == '"') {
             quoted += '"';
         }
@@ -81,17 +81,19 @@ std::string ecsv_text(const std::vector<EcsvColumn>& columns,
     if (!meta.empty()) {
         text += "# meta:\n";
         for (const auto& [key, value] : meta) {
-            text += fmt::format("#   {}: {}\n", key, yaml_text(value));
+            text += fmt::format("#   {}: {}\n", yaml_text(key), yaml_text(value));
         }
     }
     text += "# schema: astropy-2.0\n";
     for (std::size_t c = 0; c < columns.size(); ++c) {
-        text += (c > 0 ? "," : "") + cell_text(columns[c].name);
+        text += c > 0 ? "," : "";
+        text += cell_text(columns[c].name);
     }
     text += '\n';
     for (std::size_t row = 0; row < rows; ++row) {
         for (std::size_t c = 0; c < columns.size(); ++c) {
-            text += (c > 0 ? "," : "") + std::visit(CellOf{row}, columns[c].values);
+            text += c > 0 ? "," : "";
+            text += std::visit(CellOf{row}, columns[c].values);
         }
         text += '\n';
     }

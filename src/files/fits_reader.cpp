@@ -4,11 +4,15 @@
 
 #include <fitsio.h>
 #include <fmt/format.h>
+#include <fmt/ranges.h>
 
 #include <algorithm>
+#include <cerrno>
 #include <cmath>
+#include <cstdlib>
 #include <cstring>
 #include <filesystem>
+#include <fstream>
 #include <limits>
 
 namespace aureole::files {
@@ -67,96 +71,207 @@ void FitsReader::check(int status, const std::string& place) const {
     }
 }
 
-FitsReader::FitsReader(const std::string& path) : path_(path), handle_(std::make_unique<Handle>()) {
+namespace {
+
+void check_place(const std::string& path) {
     std::error_code failure;
     const auto kind = std::filesystem::status(path, failure);
-    if (failure || !std::filesystem::exists(kind)) {
-        throw Error(ErrorKind::input, fmt::format("{}: not found, expected a FITS file", path));
+    if (!std::filesystem::exists(kind)) {
+        throw Error(ErrorKind::input, fmt::format("{}: not found, expected a FITS file{}", path,
+                                                  failure.value() != 0 && failure.value() != ENOENT
+                                                      ? " (" + failure.message() + ")"
+                                                      : ""));
     }
     if (std::filesystem::is_directory(kind)) {
         throw Error(ErrorKind::input, fmt::format("{}: found a folder, expected a FITS file", path));
     }
+    if (!std::filesystem::is_regular_file(kind)) {
+        throw Error(ErrorKind::input,
+                    fmt::format("{}: found a device or pipe, expected a FITS file", path));
+    }
+}
+
+/// The first bytes of what follows in a file; fewer at its end.
+std::string bytes_at(const std::string& path, std::size_t offset, std::size_t count) {
+    std::ifstream stream(path, std::ios::binary);
+    stream.seekg(static_cast<std::streamoff>(offset));
+    std::string bytes(count, '\0');
+    stream.read(bytes.data(), static_cast<std::streamsize>(count));
+    bytes.resize(static_cast<std::size_t>(std::max<std::streamsize>(stream.gcount(), 0)));
+    return bytes;
+}
+
+/// Packed as a whole (gzip, compress, PKZIP): CFITSIO unpacks such a file into memory.
+bool is_packed(const std::string& path) {
+    const std::string start = bytes_at(path, 0, 2);
+    return start == "\x1f\x8b" || start == "\x1f\x9d" || start == "PK";
+}
+
+/// A keyword that may be missing.
+template <class T> T keyword_or(fitsfile* file, int type, const char* keyword, T otherwise, int* status) {
+    T value = otherwise;
+    fits_read_key(file, type, keyword, &value, nullptr, status);
+    if (*status == KEY_NO_EXIST || *status == VALUE_UNDEFINED) {
+        *status = 0;
+        fits_clear_errmsg();
+        return otherwise;
+    }
+    return value;
+}
+
+std::string text_or(fitsfile* file, const char* keyword, const char* otherwise, int* status) {
+    char value[FLEN_VALUE] = "";
+    fits_read_key(file, TSTRING, keyword, value, nullptr, status);
+    if (*status == KEY_NO_EXIST || *status == VALUE_UNDEFINED) {
+        *status = 0;
+        fits_clear_errmsg();
+        return otherwise;
+    }
+    return value;
+}
+
+/// Quantised floats carry scale columns or keywords, and HCOMPRESS may round; other tile compression is exact.
+bool is_lossy(fitsfile* file, int bitpix, int* status) {
+    if (bitpix < 0) {
+        if (text_or(file, "ZQUANTIZ", "", status) == "NONE") {
+            return false;
+        }
+        int column = 0;
+        char name[] = "ZSCALE";
+        fits_get_colnum(file, CASEINSEN, name, &column, status);
+        const bool found = *status == 0;
+        *status = 0;
+        fits_clear_errmsg();
+        return found || keyword_or(file, TDOUBLE, "ZSCALE", 0.0, status) != 0;
+    }
+    if (!text_or(file, "ZCMPTYPE", "", status).starts_with("HCOMPRESS")) {
+        return false;
+    }
+    for (int n = 1; n <= 9; ++n) {
+        const std::string number = std::to_string(n);
+        if (text_or(file, ("ZNAME" + number).c_str(), "", status) == "SCALE") {
+            return keyword_or(file, TDOUBLE, ("ZVAL" + number).c_str(), 0.0, status) > 1;
+        }
+    }
+    return false;
+}
+
+std::vector<std::size_t> image_shape(fitsfile* file, int* status) {
+    int axes = 0;
+    fits_get_img_dim(file, &axes, status);
+    if (*status != 0) {
+        return {};
+    }
+    std::vector<LONGLONG> shape(static_cast<std::size_t>(axes));
+    fits_get_img_sizell(file, axes, shape.data(), status);
+    return {shape.begin(), shape.end()};
+}
+
+/// Bytes of an image; nothing if they are more than 2^62.
+std::optional<std::size_t> image_bytes(const HduInfo& hdu) {
+    std::size_t bytes = hdu.shape.empty() ? 0 : static_cast<std::size_t>(std::abs(hdu.bitpix) / 8);
+    for (const std::size_t axis : hdu.shape) {
+        if (axis != 0 && bytes > (std::size_t{1} << 62) / axis) {
+            return std::nullopt;
+        }
+        bytes *= axis;
+    }
+    return bytes;
+}
+
+} // namespace
+
+FitsReader::FitsReader(const std::string& path) : path_(path), handle_(std::make_unique<Handle>()) {
+    check_place(path);
     int status = 0;
     fits_open_diskfile(&handle_->file, path.c_str(), READONLY, &status);
     if (status != 0) {
         throw Error(ErrorKind::input, fmt::format("{}: cannot be read as FITS: {} (status {})", path,
                                                   cfitsio_text(status), status));
     }
+    const bool packed = is_packed(path);
     const auto file_bytes = static_cast<std::size_t>(std::filesystem::file_size(path));
-    int count = 0;
-    fits_get_num_hdus(handle_->file, &count, &status);
-    if (status != 0) {
-        throw Error(ErrorKind::input,
-                    fmt::format("{}: HDU {} cannot be read, the file may be cut short: {} (status {})", path,
-                                count + 1, cfitsio_text(status), status));
-    }
-    for (int n = 1; n <= count; ++n) {
-        HduInfo hdu;
-        hdu.number = n;
-        int type = 0;
-        fits_movabs_hdu(handle_->file, n, &type, &status);
-        check(status, fmt::format("HDU {}", n));
-        char name[FLEN_VALUE] = "";
-        fits_read_key(handle_->file, TSTRING, "EXTNAME", name, nullptr, &status);
-        if (status == KEY_NO_EXIST) {
-            status = 0;
-            fits_clear_errmsg();
-            std::strcpy(name, n == 1 ? "PRIMARY" : "");
+    std::size_t end = 0;
+    for (int n = 1;; ++n) {
+        fits_movabs_hdu(handle_->file, n, nullptr, &status);
+        if (status != 0 && n > 1 && !packed && !bytes_at(path, end, 8).starts_with("XTENSION")) {
+            break; // the end, or records that are no HDU
         }
-        hdu.name = name[0] != '\0' ? name : fmt::format("number {}", n);
-        hdu.is_image = type == IMAGE_HDU;
-        hdu.compressed = fits_is_compressed_image(handle_->file, &status) != 0;
-        if (hdu.is_image || hdu.compressed) {
-            hdu.is_image = true;
-            int axes = 0;
-            fits_get_img_type(handle_->file, &hdu.bitpix, &status);
-            fits_get_img_dim(handle_->file, &axes, &status);
-            check(status, place_of(hdu));
-            std::vector<LONGLONG> shape(static_cast<std::size_t>(axes));
-            fits_get_img_sizell(handle_->file, axes, shape.data(), &status);
-            check(status, place_of(hdu));
-            hdu.shape.assign(shape.begin(), shape.end());
-            double scale = 1;
-            double zero = 0;
-            if (fits_read_key(handle_->file, TDOUBLE, "BSCALE", &scale, nullptr, &status) != 0) {
-                status = 0;
-            }
-            if (fits_read_key(handle_->file, TDOUBLE, "BZERO", &zero, nullptr, &status) != 0) {
-                status = 0;
-            }
-            hdu.scaled = scale != 1 || zero != 0;
-            // Quantised floats carry scale columns or keywords; integers and unquantised floats are kept
-            // exactly.
-            int column = 0;
-            char quantised[FLEN_VALUE] = "";
-            if (hdu.compressed && hdu.bitpix < 0) {
-                fits_get_colnum(handle_->file, CASEINSEN, const_cast<char*>("ZSCALE"), &column, &status);
-                hdu.lossy = status == 0;
-                status = 0;
-                if (fits_read_key(handle_->file, TSTRING, "ZQUANTIZ", quantised, nullptr, &status) == 0 &&
-                    std::strcmp(quantised, "NONE") == 0) {
-                    hdu.lossy = false;
-                }
-                status = 0;
-            }
-            fits_clear_errmsg();
+        if (packed && status == END_OF_FILE) {
+            break;
         }
+        if (status != 0) {
+            throw Error(ErrorKind::input,
+                        fmt::format("{}: HDU number {}: header cut short or damaged, found {} bytes from its start "
+                                    "at byte {}: {} (status {})",
+                                    path, n, file_bytes > end ? file_bytes - end : 0, end, cfitsio_text(status),
+                                    status));
+        }
+        hdus_.push_back(describe_current(n, packed));
         LONGLONG header = 0;
         LONGLONG start = 0;
-        LONGLONG end = 0;
-        fits_get_hduaddrll(handle_->file, &header, &start, &end, &status);
+        LONGLONG stop = 0;
+        fits_get_hduaddrll(handle_->file, &header, &start, &stop, &status);
+        check(status, place_of(hdus_.back()));
+        end = static_cast<std::size_t>(stop);
+        if (!packed && end > file_bytes) {
+            throw Error(ErrorKind::input,
+                        fmt::format("{}: {}: cut short: found {} bytes in the file, expected {} by its header",
+                                    path, place_of(hdus_.back()), file_bytes, end));
+        }
+    }
+    fits_clear_errmsg();
+}
+
+HduInfo FitsReader::describe_current(int number, bool packed) const {
+    fitsfile* file = handle_->file;
+    int status = 0;
+    HduInfo hdu;
+    hdu.number = number;
+    hdu.name = text_or(file, "EXTNAME", number == 1 ? "PRIMARY" : "", &status);
+    if (hdu.name.empty()) {
+        hdu.name = fmt::format("number {}", number);
+    }
+    check(status, fmt::format("HDU number {}: EXTNAME", number));
+    int type = 0;
+    fits_get_hdu_type(file, &type, &status);
+    const bool tiled = fits_is_compressed_image(file, &status) != 0;
+    check(status, place_of(hdu));
+    hdu.is_image = type == IMAGE_HDU || tiled;
+    hdu.compressed = tiled || packed;
+    if (!hdu.is_image) {
+        return hdu;
+    }
+    fits_get_img_type(file, &hdu.bitpix, &status);
+    hdu.shape = image_shape(file, &status);
+    check(status, place_of(hdu));
+    const auto bytes = image_bytes(hdu);
+    if (!bytes) {
+        throw Error(ErrorKind::input, fmt::format("{}: {}: NAXISn: found {}, expected sizes a file can have",
+                                                  path_, place_of(hdu), fmt::join(hdu.shape, " x ")));
+    }
+    const double scale = keyword_or(file, TDOUBLE, "BSCALE", 1.0, &status);
+    check(status, place_of(hdu) + ": BSCALE");
+    const double zero = keyword_or(file, TDOUBLE, "BZERO", 0.0, &status);
+    check(status, place_of(hdu) + ": BZERO");
+    if (!std::isfinite(scale) || !std::isfinite(zero) || scale == 0) {
+        throw Error(ErrorKind::input,
+                    fmt::format("{}: {}: found BSCALE {} and BZERO {}, expected finite numbers, BSCALE not 0",
+                                path_, place_of(hdu), scale, zero));
+    }
+    hdu.scaled = scale != 1 || zero != 0;
+    if (tiled) {
+        hdu.lossy = is_lossy(file, hdu.bitpix, &status);
+        check(status, place_of(hdu));
+    }
+    if (!hdu.compressed) {
+        LONGLONG start = 0;
+        fits_get_hduaddrll(file, nullptr, &start, nullptr, &status);
         check(status, place_of(hdu));
         hdu.data_offset = static_cast<std::size_t>(start);
-        hdu.data_bytes =
-            hdu.compressed ? 0 : hdu.values() * static_cast<std::size_t>(std::abs(hdu.bitpix) / 8);
-        if (static_cast<std::size_t>(end) > file_bytes) {
-            throw Error(
-                ErrorKind::input,
-                fmt::format("{}: {}: cut short: found {} bytes in the file, expected {} by its header", path,
-                            place_of(hdu), file_bytes, end));
-        }
-        hdus_.push_back(std::move(hdu));
+        hdu.data_bytes = *bytes;
     }
+    return hdu;
 }
 
 FitsReader::~FitsReader() = default;
@@ -266,11 +381,15 @@ template <> int fits_type<double>() {
     return TDOUBLE;
 }
 
-template <class T> int read_values(fitsfile* file, std::size_t first, std::size_t count, T* values) {
+template <class T>
+int read_values(fitsfile* file, const HduInfo& hdu, std::size_t first, std::size_t count, T* values) {
     int status = 0;
     T blank = std::numeric_limits<T>::quiet_NaN();
+    // Floats carry their own NaN; asked for blanks, CFITSIO would turn infinities into them too.
+    const bool has_blanks = hdu.bitpix > 0 || hdu.lossy;
+    int any_blank = 0; // CFITSIO writes to it without asking
     fits_read_img(file, fits_type<T>(), static_cast<LONGLONG>(first) + 1, static_cast<LONGLONG>(count),
-                  &blank, values, nullptr, &status);
+                  has_blanks ? &blank : nullptr, values, &any_blank, &status);
     return status;
 }
 
@@ -278,12 +397,12 @@ template <class T> int read_values(fitsfile* file, std::size_t first, std::size_
 
 void FitsReader::read(const HduInfo& hdu, std::size_t first, std::size_t count, float* values) {
     move_to(hdu);
-    check(read_values(handle_->file, first, count, values), place_of(hdu));
+    check(read_values(handle_->file, hdu, first, count, values), place_of(hdu));
 }
 
 void FitsReader::read(const HduInfo& hdu, std::size_t first, std::size_t count, double* values) {
     move_to(hdu);
-    check(read_values(handle_->file, first, count, values), place_of(hdu));
+    check(read_values(handle_->file, hdu, first, count, values), place_of(hdu));
 }
 
 std::vector<double> FitsReader::read_all(const HduInfo& hdu) {

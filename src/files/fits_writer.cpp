@@ -6,6 +6,7 @@
 #include <fitsio.h>
 #include <fmt/format.h>
 
+#include <algorithm>
 #include <charconv>
 #include <cmath>
 #include <cstdlib>
@@ -62,11 +63,41 @@ std::string date_text() {
 
 namespace {
 
+/// FITS headers and tables hold printable ASCII only: everything else becomes '?', a UTF-8 character one of
+/// them.
+std::string ascii(const std::string& text) {
+    std::string plain;
+    for (const char c : text) {
+        const auto byte = static_cast<unsigned char>(c);
+        if (byte >= 0x20 && byte < 0x7f) {
+            plain += c;
+        } else if ((byte >> 6) != 2) {
+            plain += byte < 0x20 ? ' ' : '?';
+        }
+    }
+    return plain;
+}
+
+void check_keyword(const std::string& keyword) {
+    const bool known = std::all_of(keyword.begin(), keyword.end(), [](char c) {
+        return (c >= 'A' && c <= 'Z') || (c >= '0' && c <= '9') || c == '-' || c == '_';
+    });
+    if (keyword.empty() || keyword.size() > 8 || !known) {
+        throw Error(ErrorKind::runtime,
+                    fmt::format("FITS keyword: found \"{}\", expected 1 to 8 of A-Z, 0-9, - and _", keyword));
+    }
+}
+
 void write_card(fitsfile* file, const Card& card, int* status) {
+    check_keyword(card.keyword);
     const char* key = card.keyword.c_str();
-    const char* comment = card.comment.empty() ? nullptr : card.comment.c_str();
-    if (const auto* text = std::get_if<std::string>(&card.value)) {
-        if (text->size() > 68) {
+    const std::string plain_comment = ascii(card.comment);
+    const char* comment = plain_comment.empty() ? nullptr : plain_comment.c_str();
+    if (const auto* given = std::get_if<std::string>(&card.value)) {
+        const std::string plain = ascii(*given);
+        const std::string* text = &plain;
+        if (text->size() + static_cast<std::size_t>(std::count(text->begin(), text->end(), '\'')) > 68) {
+            fits_update_key_str(file, "LONGSTRN", "OGIP 1.0", "some texts go on in CONTINUE cards", status);
             fits_update_key_longstr(file, key, text->c_str(), comment, status);
         } else {
             fits_update_key_str(file, key, text->c_str(), comment, status);
@@ -83,6 +114,11 @@ void write_card(fitsfile* file, const Card& card, int* status) {
                     digits = d;
                     break;
                 }
+            }
+            // All digits in front of the point: 180. and not 1.8E+02.
+            if (std::abs(*real) < 1e15) {
+                digits = std::max(digits,
+                                  static_cast<int>(std::to_string(std::llabs(std::llround(*real))).size()));
             }
             fits_update_key_dbl(file, key, *real, -std::max(digits, 2), comment, status);
         }
@@ -130,6 +166,14 @@ void FitsWriter::write_image(const std::string& name,
                              const void* values,
                              std::size_t count,
                              const Header& header) {
+    std::size_t expected = shape.empty() ? 0 : 1;
+    for (const std::size_t axis : shape) {
+        expected *= axis;
+    }
+    if (count != expected) {
+        throw Error(ErrorKind::runtime, fmt::format("image {}: found {} values, expected {} by its shape",
+                                                    name, count, expected));
+    }
     int status = 0;
     std::vector<LONGLONG> axes(shape.begin(), shape.end());
     fits_create_imgll(handle_->file, shape.empty() ? 8 : bitpix, static_cast<int>(axes.size()), axes.data(),
@@ -165,7 +209,7 @@ void FitsWriter::finish_hdu(const std::string& name, const Header& header) {
         write_card(handle_->file, card, &status);
     }
     for (const std::string& line : header.history) {
-        fits_write_history(handle_->file, line.c_str(), &status);
+        fits_write_history(handle_->file, ascii(line).c_str(), &status);
     }
     handle_->check(status);
 }
@@ -188,21 +232,26 @@ void FitsWriter::table(const std::string& name,
                        const std::vector<TableColumn>& columns,
                        const Header& header) {
     std::vector<std::string> formats;
+    std::vector<std::vector<std::string>> plain(columns.size());
     std::size_t rows = 0;
-    for (const TableColumn& column : columns) {
+    for (std::size_t c = 0; c < columns.size(); ++c) {
+        const TableColumn& column = columns[c];
+        const std::size_t length =
+            std::visit([](const auto& values) { return values.size(); }, column.values);
+        if (c > 0 && length != rows) {
+            throw Error(ErrorKind::runtime, fmt::format("table {}: column {}: found {} rows, expected {}",
+                                                        name, column.name, length, rows));
+        }
+        rows = length;
         if (const auto* texts = std::get_if<std::vector<std::string>>(&column.values)) {
             std::size_t longest = 1;
             for (const std::string& text : *texts) {
-                longest = std::max(longest, text.size());
+                plain[c].push_back(ascii(text));
+                longest = std::max(longest, plain[c].back().size());
             }
             formats.push_back(fmt::format("{}A", longest));
-            rows = texts->size();
-        } else if (const auto* reals = std::get_if<std::vector<double>>(&column.values)) {
-            formats.emplace_back("1D");
-            rows = reals->size();
         } else {
-            formats.emplace_back("1K");
-            rows = std::get<std::vector<long>>(column.values).size();
+            formats.emplace_back(std::holds_alternative<std::vector<double>>(column.values) ? "1D" : "1K");
         }
     }
     std::vector<char*> names;
@@ -222,9 +271,9 @@ void FitsWriter::table(const std::string& name,
     for (std::size_t c = 0; c < columns.size(); ++c) {
         const int number = static_cast<int>(c) + 1;
         const auto n = static_cast<LONGLONG>(rows);
-        if (const auto* texts = std::get_if<std::vector<std::string>>(&columns[c].values)) {
+        if (std::holds_alternative<std::vector<std::string>>(columns[c].values)) {
             std::vector<char*> pointers;
-            for (const std::string& text : *texts) {
+            for (const std::string& text : plain[c]) {
                 pointers.push_back(const_cast<char*>(text.c_str()));
             }
             fits_write_col(handle_->file, TSTRING, number, 1, 1, n, pointers.data(), &status);

@@ -4,8 +4,8 @@
 
 namespace aureole::files {
 
-std::uint64_t fnv1a(std::string_view text) {
-    std::uint64_t hash = 0xcbf29ce484222325U;
+std::uint64_t fnv1a(std::string_view text, std::uint64_t start) {
+    std::uint64_t hash = start;
     for (const char c : text) {
         hash = (hash ^ static_cast<unsigned char>(c)) * 0x100000001b3U;
     }

@@ -8,7 +8,8 @@ namespace aureole::files {
 
 namespace {
 
-/// Length of the UTF-8 sequence at `place`, or 0 where there is none.
+/// Length of the UTF-8 sequence at `place`, or 0 where there is none (RFC 3629: no overlong forms, no
+/// surrogates, nothing above U+10FFFF).
 std::size_t utf8_length(const std::string& text, std::size_t place) {
     const auto byte = [&](std::size_t i) { return static_cast<unsigned char>(text[i]); };
     const unsigned char first = byte(place);
@@ -24,6 +25,14 @@ std::size_t utf8_length(const std::string& text, std::size_t place) {
         if ((byte(place + i) >> 6) != 2) {
             return 0;
         }
+    }
+    const unsigned char second = length > 1 ? byte(place + 1) : 0;
+    const bool overlong = first == 0xc0 || first == 0xc1 || (first == 0xe0 && second < 0xa0) ||
+                          (first == 0xf0 && second < 0x90);
+    const bool surrogate = first == 0xed && second >= 0xa0;
+    const bool beyond = first > 0xf4 || (first == 0xf4 && second >= 0x90);
+    if (overlong || surrogate || beyond) {
+        return 0;
     }
     return length;
 }

@@ -20,7 +20,13 @@ Error output_error(const std::filesystem::path& path, std::string_view what, int
 } // namespace
 
 PendingFile::PendingFile(std::filesystem::path target, bool replace) : target_(std::move(target)) {
-    if (!replace && std::filesystem::exists(target_)) {
+    std::error_code failure;
+    const auto kind = std::filesystem::status(target_, failure);
+    if (std::filesystem::is_directory(kind)) {
+        throw Error(ErrorKind::output,
+                    fmt::format("{}: found a folder, expected a name for a file", target_.string()));
+    }
+    if (!replace && std::filesystem::exists(kind)) {
         throw Error(ErrorKind::output,
                     fmt::format("{}: exists already, expected a new name, or --force to replace it",
                                 target_.string()));
@@ -75,6 +81,9 @@ void write_text(const std::filesystem::path& target, std::string_view text, bool
     }
     while (!text.empty()) {
         const ssize_t written = write(descriptor, text.data(), text.size());
+        if (written < 0 && errno == EINTR) {
+            continue;
+        }
         if (written < 0) {
             const int number = errno;
             close(descriptor);

@@ -7,6 +7,7 @@
 #include "aureole/version.hpp"
 
 #include <fmt/format.h>
+#include <fmt/ranges.h>
 
 #include <algorithm>
 #include <cerrno>
@@ -33,6 +34,16 @@ std::string file_text(const fs::path& path) {
     return text.str();
 }
 
+/// Nothing outside the folder is ever touched, whatever a list says.
+void keep_if_inside(const std::string& relative, std::vector<std::string>& files) {
+    const fs::path path(relative);
+    const bool climbs =
+        std::any_of(path.begin(), path.end(), [](const fs::path& part) { return part == ".."; });
+    if (!relative.empty() && path.is_relative() && !climbs) {
+        files.push_back(relative);
+    }
+}
+
 /// The relative paths of a manifest: lines of the form "path": "...".
 std::vector<std::string> listed_files(const fs::path& manifest) {
     std::vector<std::string> files;
@@ -41,20 +52,44 @@ std::vector<std::string> listed_files(const fs::path& manifest) {
     const std::string mark = "\"path\": \"";
     while (std::getline(lines, line)) {
         const auto start = line.find(mark);
-        if (start == std::string::npos) {
-            continue;
-        }
-        const auto end = line.find('"', start + mark.size());
-        const std::string relative = line.substr(start + mark.size(), end - start - mark.size());
-        const fs::path path(relative);
-        const bool inside =
-            path.is_relative() &&
-            std::none_of(path.begin(), path.end(), [](const fs::path& part) { return part == ".."; });
-        if (inside && !relative.empty()) {
-            files.push_back(relative);
+        if (start != std::string::npos) {
+            const auto end = line.find('"', start + mark.size());
+            keep_if_inside(line.substr(start + mark.size(), end - start - mark.size()), files);
         }
     }
     return files;
+}
+
+/// Who holds a lock, and what he has begun to write: a process number, then one relative path a line.
+struct LockText {
+    long owner = 0;
+    std::vector<std::string> files;
+};
+
+LockText read_lock(const fs::path& lock) {
+    LockText result;
+    std::istringstream lines(file_text(lock));
+    std::string line;
+    if (std::getline(lines, line)) {
+        result.owner = std::strtol(line.c_str(), nullptr, 10);
+    }
+    while (std::getline(lines, line)) {
+        keep_if_inside(line, result.files);
+    }
+    return result;
+}
+
+/// Adds to a file that exists, or is made anew. Gives errno, 0 if all is well.
+int append_line(const fs::path& path, int flags, const std::string& line) {
+    const int descriptor = open(path.c_str(), O_WRONLY | O_CLOEXEC | flags, 0644);
+    if (descriptor < 0) {
+        return errno;
+    }
+    const std::string text = line + '\n';
+    const bool written = write(descriptor, text.data(), text.size()) == static_cast<ssize_t>(text.size());
+    const int number = written ? 0 : errno;
+    close(descriptor);
+    return number;
 }
 
 bool is_alive(long pid) {
@@ -63,7 +98,7 @@ bool is_alive(long pid) {
 
 } // namespace
 
-RunFolder::RunFolder(fs::path folder, bool force) : folder_(std::move(folder)) {
+RunFolder::RunFolder(fs::path folder, bool force) : folder_(std::move(folder)), force_(force) {
     std::error_code failure;
     if (fs::exists(folder_, failure) && !fs::is_directory(folder_, failure)) {
         throw Error(ErrorKind::output,
@@ -74,86 +109,123 @@ RunFolder::RunFolder(fs::path folder, bool force) : folder_(std::move(folder)) {
         throw Error(ErrorKind::output,
                     fmt::format("{}: cannot be made: {}", folder_.string(), failure.message()));
     }
-    const fs::path manifest = folder_ / manifest_name;
-    if (fs::exists(manifest)) {
-        if (!force) {
-            throw Error(
-                ErrorKind::output,
-                fmt::format(
-                    "{}: holds the results of an earlier run ({}), expected an empty folder, or --force to "
-                    "replace them",
-                    folder_.string(), manifest.string()));
-        }
-        old_files_ = listed_files(manifest);
+    refuse_results(force);
+    take_lock();
+    try {
+        refuse_results(force); // of a run that ended meanwhile
+    } catch (...) {
+        leave_lock();
+        throw;
     }
+    for (std::string& old : listed_files(folder_ / manifest_name)) {
+        old_files_.push_back(std::move(old));
+    }
+}
+
+void RunFolder::refuse_results(bool force) const {
+    std::error_code failure;
+    const fs::path manifest = folder_ / manifest_name;
+    if (fs::exists(manifest, failure) &&
+        file_text(manifest).find("\"program\": \"aureole ") == std::string::npos) {
+        throw Error(ErrorKind::output,
+                    fmt::format("{}: found a manifest that aureole did not write, expected another "
+                                "folder for the results",
+                                manifest.string()));
+    }
+    if (!force && fs::exists(manifest, failure)) {
+        throw Error(ErrorKind::output,
+                    fmt::format("{}: holds the results of an earlier run ({}), expected an empty folder, or "
+                                "--force to replace them",
+                                folder_.string(), manifest.string()));
+    }
+}
+
+void RunFolder::take_lock() {
     const fs::path lock = folder_ / lock_name;
+    std::error_code failure;
     for (int attempt = 0;; ++attempt) {
-        const int descriptor = open(lock.c_str(), O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, 0644);
-        if (descriptor >= 0) {
-            const std::string pid = fmt::format("{}\n", getpid());
-            const bool written =
-                write(descriptor, pid.data(), pid.size()) == static_cast<ssize_t>(pid.size());
-            close(descriptor);
-            if (!written) {
-                fs::remove(lock, failure);
-                throw Error(ErrorKind::output,
-                            fmt::format("{}: cannot be written: {}", lock.string(), std::strerror(errno)));
-            }
+        const int number = append_line(lock, O_CREAT | O_EXCL, fmt::format("{}", getpid()));
+        if (number == 0) {
             lock_ = lock;
             return;
         }
-        if (errno != EEXIST || attempt > 3) {
+        if (number != EEXIST || attempt > 3) {
+            if (number != EEXIST) {
+                fs::remove(lock, failure);
+            }
+            if (made_) {
+                fs::remove(folder_, failure);
+            }
             throw Error(ErrorKind::output,
-                        fmt::format("{}: cannot be written to: {}", folder_.string(), std::strerror(errno)));
+                        fmt::format("{}: cannot be written to: {}", folder_.string(), std::strerror(number)));
         }
-        const long owner = std::strtol(file_text(lock).c_str(), nullptr, 10);
-        if (is_alive(owner)) {
+        const LockText found = read_lock(lock);
+        if (is_alive(found.owner)) {
             throw Error(ErrorKind::output, fmt::format("{}: another run (process {}) is writing there",
-                                                       folder_.string(), owner));
+                                                       folder_.string(), found.owner));
         }
-        fs::remove(lock, failure); // of a run that was killed
+        // Of a run that was killed. What it left behind goes when this run writes.
+        leftovers_ = found.files;
+        old_files_ = found.files;
+        fs::remove(lock, failure);
+    }
+}
+
+void RunFolder::leave_lock() const {
+    std::error_code ignored;
+    fs::remove(lock_, ignored);
+    if (!leftovers_.empty()) {
+        // Not removed yet: the next run shall know of them.
+        append_line(lock_, O_CREAT | O_EXCL, fmt::format("0\n{}", fmt::join(leftovers_, "\n")));
     }
 }
 
 RunFolder::~RunFolder() {
     std::error_code ignored;
-    if (!lock_.empty()) {
-        fs::remove(lock_, ignored);
+    if (!finished_) {
+        remove_results(new_files_);
     }
-    if (made_ && files_.empty()) {
+    leave_lock();
+    if (made_ && !finished_) {
         fs::remove(folder_, ignored); // only if empty
     }
 }
 
-void RunFolder::protect(const fs::path& input) const {
+void RunFolder::remove_results(const std::vector<std::string>& results) const {
+    std::error_code ignored;
+    std::set<fs::path> folders;
+    for (const std::string& result : results) {
+        fs::remove(folder_ / result, ignored);
+        folders.insert((folder_ / result).parent_path());
+    }
+    for (const fs::path& inner : folders) {
+        if (inner != folder_) {
+            fs::remove(inner, ignored); // only if empty
+        }
+    }
+}
+
+void RunFolder::protect(const fs::path& input) {
     std::error_code failure;
     const fs::path real = fs::weakly_canonical(input, failure);
     for (const std::string& old : old_files_) {
         if (fs::weakly_canonical(folder_ / old, failure) == real) {
             throw Error(
                 ErrorKind::output,
-                fmt::format(
-                    "{}: is an input of this run and a result of the earlier run in {}, expected another "
-                    "folder for the results",
-                    input.string(), folder_.string()));
+                fmt::format("{}: is an input of this run and a result of the earlier run in {}, expected "
+                            "another folder for the results",
+                            input.string(), folder_.string()));
         }
     }
+    inputs_.push_back(real);
 }
 
 void RunFolder::begin_writing() {
     std::error_code failure;
     fs::remove(folder_ / manifest_name, failure);
-    std::set<fs::path> folders;
-    for (const std::string& old : old_files_) {
-        fs::remove(folder_ / old, failure);
-        folders.insert((folder_ / old).parent_path());
-    }
-    for (const fs::path& inner : folders) {
-        if (inner != folder_) {
-            fs::remove(inner, failure); // only if empty
-        }
-    }
+    remove_results(old_files_);
     old_files_.clear();
+    leftovers_.clear();
 }
 
 fs::path RunFolder::place(const std::string& relative) {
@@ -164,23 +236,56 @@ fs::path RunFolder::place(const std::string& relative) {
         throw Error(ErrorKind::output,
                     fmt::format("{}: cannot be made: {}", path.parent_path().string(), failure.message()));
     }
+    const fs::path real = fs::weakly_canonical(path, failure);
+    if (std::find(inputs_.begin(), inputs_.end(), real) != inputs_.end()) {
+        throw Error(ErrorKind::output,
+                    fmt::format("{}: is an input of this run, expected another folder for the results",
+                                path.string()));
+    }
+    const bool was_there = fs::exists(path, failure);
+    if (was_there && !force_) {
+        throw Error(ErrorKind::output, fmt::format("{}: exists already, expected a new name, or --force to "
+                                                   "replace it",
+                                                   path.string()));
+    }
+    if (!was_there) { // what was there is not ours to remove if this run fails
+        if (const int number = append_line(lock_, O_APPEND, relative); number != 0) {
+            throw Error(ErrorKind::output,
+                        fmt::format("{}: cannot be written: {}", lock_.string(), std::strerror(number)));
+        }
+        new_files_.push_back(relative);
+    }
     files_.push_back(relative);
     return path;
 }
 
 void RunFolder::write_text(const std::string& relative, std::string_view text) {
-    files::write_text(place(relative), text, false);
+    files::write_text(place(relative), text, force_);
 }
 
 void RunFolder::finish(const std::string& command) {
     Json::Array list;
     for (const std::string& relative : files_) {
-        const std::string text = file_text(folder_ / relative);
-        list.push_back(Json::Object{{"path", relative}, {"bytes", text.size()}, {"fnv1a", hex(fnv1a(text))}});
+        std::size_t bytes = 0;
+        std::uint64_t hash = fnv1a("");
+        std::ifstream stream(folder_ / relative, std::ios::binary);
+        if (!stream) {
+            throw Error(ErrorKind::output,
+                        fmt::format("{}: announced, but not written", (folder_ / relative).string()));
+        }
+        std::vector<char> buffer(std::size_t{1} << 16);
+        while (stream.read(buffer.data(), static_cast<std::streamsize>(buffer.size())) ||
+               stream.gcount() > 0) {
+            const std::string_view part(buffer.data(), static_cast<std::size_t>(stream.gcount()));
+            hash = fnv1a(part, hash);
+            bytes += part.size();
+        }
+        list.push_back(Json::Object{{"path", relative}, {"bytes", bytes}, {"fnv1a", hex(hash)}});
     }
     const Json manifest =
         Json::Object{{"program", std::string("aureole ") + version}, {"command", command}, {"files", list}};
     files::write_text(folder_ / manifest_name, manifest.text(), true);
+    finished_ = true;
 }
 
 } // namespace aureole::files

@@ -92,7 +92,7 @@ class HeaderCheck {
         if (name != "HALO-GRID") {
             throw Error(ErrorKind::input,
                         fmt::format("{}: HDU PRIMARY: FMTNAME: found {}, expected 'HALO-GRID'", file_.path,
-                                    name ? "'" + *name + "'" : "none"));
+                                    name ? fmt::format("'{}'", *name) : "none"));
         }
         file_.version = reader_.text(primary, "FMTVERS").value_or("");
         int major = 0;
@@ -117,7 +117,7 @@ class HeaderCheck {
             file_.grid.geometry = geometry == "RZ" ? Geometry::rz : Geometry::xyz;
         } else {
             problem("PRIMARY", fmt::format("GEOMETRY: found {}, expected 'XYZ' or 'RZ'",
-                                           geometry ? "'" + *geometry + "'" : "none"));
+                                           geometry ? fmt::format("'{}'", *geometry) : "none"));
             throw_problems(); // without it nothing else can be judged
         }
         attempt("PRIMARY", [&] { file_.grid.mirrored = reader_.flag(primary, "ZMIRROR").value_or(false); });
@@ -367,7 +367,7 @@ class HeaderCheck {
             const auto found = reader_.text(hdu, "COMPS");
             if (!found || split(*found) != split(components)) {
                 problem(hdu.name, fmt::format("COMPS: found {}, expected '{}'",
-                                              found ? "'" + *found + "'" : "none", components));
+                                              found ? fmt::format("'{}'", *found) : "none", components));
             }
         }
         if (hdu.name == "RADIATION") {

@@ -7,6 +7,7 @@
 #include <muParser.h>
 
 #include <algorithm>
+#include <cassert>
 
 namespace aureole::scenario {
 
@@ -75,6 +76,7 @@ Formula::Formula(Formula&&) noexcept = default;
 Formula& Formula::operator=(Formula&&) noexcept = default;
 
 double Formula::eval(std::span<const double> values) {
+    assert(values.size() == state_->values.size());
     std::copy(values.begin(), values.end(), state_->values.begin());
     try {
         return state_->parser.Eval();

@@ -1,23 +1,31 @@
 #include "aureole/scenario/keys.hpp"
 
+#include "scenario/profile_names.hpp"
+
 #include "aureole/base/constants.hpp"
 
-#include <fmt/format.h>
-#include <fmt/ranges.h>
-
 #include <algorithm>
-#include <cmath>
-#include <numeric>
+#include <limits>
 
 namespace aureole::scenario {
 
 namespace {
 
 constexpr double infinity = std::numeric_limits<double>::infinity();
-constexpr double tiny = 1e-300; // "above zero"
+constexpr double tiny = above_zero;
 
-const std::vector<std::string> profile_kinds{
-    "none", "constant", "double_exponential", "sech2", "gaussian", "beta", "power_law", "file", "formula"};
+enum class FromFile { no, yes };
+
+/// The kinds of spatial profile; `file` only where a grid file can hold the quantity.
+std::vector<std::string> profile_choices(FromFile from_file) {
+    std::vector<std::string> choices;
+    for (const std::string_view name : profile_names) {
+        if (name != "file" || from_file == FromFile::yes) {
+            choices.emplace_back(name);
+        }
+    }
+    return choices;
+}
 
 Key quantity(std::string path,
              const Dimension& dimension,
@@ -57,8 +65,9 @@ void add_profile(std::vector<Key>& keys,
                  const Dimension& dimension,
                  const std::string& kind,
                  const std::string& value,
-                 const std::string& what) {
-    keys.push_back(choice(path + ".profile", profile_kinds, kind, "shape of " + what));
+                 const std::string& what,
+                 FromFile from_file = FromFile::yes) {
+    keys.push_back(choice(path + ".profile", profile_choices(from_file), kind, "shape of " + what));
     keys.push_back(
         quantity(path + ".value", dimension, 0, infinity, value, "amplitude: the value at the centre"));
     keys.push_back(
@@ -104,8 +113,8 @@ void add_species(std::vector<Key>& keys,
     keys.push_back(integer(name + ".energy_nodes", 4, 2000, "97", "energy nodes, even in the logarithm"));
     keys.push_back(number(name + ".height_slope", -2, 2, "0",
                           "the height of the spatial profile goes as (T/reference_energy)^height_slope"));
-    add_profile(keys, name + ".space", dimension::none, "double_exponential", "1",
-                "the spatial distribution");
+    add_profile(keys, name + ".space", dimension::none, "double_exponential", "1", "the spatial distribution",
+                FromFile::no);
     add_profile(keys, name + ".energy_density", dimension::energy_density, "none", "0 eV cm-3",
                 "the energy density (source = energy_density)");
 }
@@ -160,10 +169,14 @@ std::vector<Key> make_keys() {
     add(boolean("radiation.cmb", true, "the cosmic microwave background"));
     add(quantity("radiation.cmb_temperature", temperature, tiny, 1e9, "2.7255 K",
                  "its temperature (Fixsen 2009, ApJ 707, 916)"));
-    add(quantity("radiation.component.<name>.temperature", temperature, tiny, 1e9, "4000 K",
+    add(quantity("radiation.component.<name>.temperature", temperature, tiny, 1e9, "",
                  "of the diluted black body"));
-    add_profile(keys, "radiation.component.<name>", energy_density, "constant", "0 eV cm-3",
-                "its energy density");
+    add_profile(keys, "radiation.component.<name>", energy_density, "constant", "", "its energy density",
+                FromFile::no);
+    for (Key& key : keys) {
+        key.required = key.path == "radiation.component.<name>.temperature" ||
+                       key.path == "radiation.component.<name>.value";
+    }
 
     add_profile(keys, "turbulence.speed", speed, "none", "0 km s-1", "the turbulent speed");
     add_profile(keys, "turbulence.scale", length, "none", "0 kpc", "the outer scale of the turbulence");
@@ -282,16 +295,45 @@ std::vector<Key> make_keys() {
     return keys;
 }
 
-std::vector<std::string> parts_of(std::string_view path) {
-    std::vector<std::string> parts(1);
-    for (const char c : path) {
-        if (c == '.') {
-            parts.emplace_back();
-        } else {
-            parts.back() += c;
+/// The part of a dotted path before the first dot, taken off its front.
+std::string_view take_part(std::string_view& path) {
+    const std::string_view part = path.substr(0, path.find('.'));
+    path.remove_prefix(std::min(path.size(), part.size() + 1));
+    return part;
+}
+
+/// Whether `path` is `pattern`, or its beginning up to a dot; "<name>" stands for any one part that is not
+/// empty.
+enum class Match { none, beginning, whole };
+Match match(std::string_view pattern, std::string_view path) {
+    if (path.empty() || path.back() == '.') {
+        return Match::none;
+    }
+    while (!pattern.empty() && !path.empty()) {
+        const std::string_view expected = take_part(pattern);
+        const std::string_view found = take_part(path);
+        if (found != expected && (expected != "<name>" || found.empty())) {
+            return Match::none;
         }
     }
-    return parts;
+    if (!path.empty()) {
+        return Match::none;
+    }
+    return pattern.empty() ? Match::whole : Match::beginning;
+}
+
+/// The pattern with its "<name>" as the user's path has it.
+std::string with_name_of(std::string pattern, std::string_view path) {
+    const auto place = pattern.find("<name>");
+    if (place == std::string::npos) {
+        return pattern;
+    }
+    for (auto dots = std::count(pattern.begin(), pattern.begin() + static_cast<std::ptrdiff_t>(place), '.');
+         dots > 0; --dots) {
+        take_part(path);
+    }
+    const std::string_view name = take_part(path);
+    return name.empty() ? pattern : pattern.replace(place, 6, name);
 }
 
 /// Edits between two words: insertions, deletions, substitutions, swaps of neighbours (Damerau 1964, Comm.
@@ -314,52 +356,22 @@ std::size_t edits(std::string_view a, std::string_view b) {
     return d[a.size()][b.size()];
 }
 
-std::string kind_text(const Key& key) {
-    switch (key.kind) {
-    case Kind::quantity:
-        return key.dimension == dimension::none
-                   ? "number"
-                   : describe(key.dimension).name.substr(describe(key.dimension).name.find(' ') + 1);
-    case Kind::number:
-        return "number";
-    case Kind::integer:
-        return "whole number";
-    case Kind::boolean:
-        return "true or false";
-    case Kind::choice:
-        return fmt::format("one of {}", fmt::join(key.choices, ", "));
-    case Kind::formula:
-        return "formula";
-    case Kind::path:
-        return "file";
-    case Kind::quantity_list:
-        return "list of " + describe(key.dimension).name.substr(describe(key.dimension).name.find(' ') + 1) +
-               " values";
-    case Kind::choice_list:
-        return fmt::format("list of {}", fmt::join(key.choices, ", "));
-    case Kind::text_list:
-        return "list of texts";
-    default:
-        return "text";
+/// The nearest to `path` of the candidates that the keys offer; the first of equally near ones.
+template <class Candidates> std::string nearest_of(std::string_view path, const Candidates& candidates) {
+    path = path.substr(0, 100); // no key is longer
+    std::string best;
+    std::size_t least = std::numeric_limits<std::size_t>::max();
+    for (const Key& key : keys()) {
+        for (const std::string& candidate : candidates(with_name_of(key.path, path))) {
+            // Someone who shortens a name means that name, however much is left out.
+            const std::size_t distance = candidate.starts_with(path) ? 1 : edits(path, candidate);
+            if (distance < least) {
+                least = distance;
+                best = candidate;
+            }
+        }
     }
-}
-
-std::string bound_text(const Key& key, double bound) {
-    return key.dimension == dimension::none ? fmt::format("{:g}", bound)
-                                            : format_quantity(bound, key.dimension);
-}
-
-std::string range_text(const Key& key) {
-    std::string text;
-    if (key.least == tiny) {
-        text = "above 0";
-    } else if (std::isfinite(key.least)) {
-        text = "from " + bound_text(key, key.least);
-    }
-    if (std::isfinite(key.greatest)) {
-        text += (text.empty() ? "to " : " to ") + bound_text(key, key.greatest);
-    }
-    return text;
+    return best;
 }
 
 } // namespace
@@ -370,62 +382,31 @@ const std::vector<Key>& keys() {
 }
 
 const Key* find_key(std::string_view path) {
-    const auto wanted = parts_of(path);
     for (const Key& key : keys()) {
-        const auto parts = parts_of(key.path);
-        const bool same = parts.size() == wanted.size() &&
-                          std::equal(parts.begin(), parts.end(), wanted.begin(),
-                                     [](const std::string& pattern, const std::string& part) {
-                                         return pattern == part || (pattern == "<name>" && !part.empty());
-                                     });
-        if (same) {
+        if (match(key.path, path) == Match::whole) {
             return &key;
         }
     }
     return nullptr;
 }
 
-std::string nearest_key(std::string_view path) {
-    std::string best;
-    std::size_t least = std::numeric_limits<std::size_t>::max();
-    if (path.size() > 200) {
-        path = path.substr(0, 200);
-    }
-    for (const Key& key : keys()) {
-        std::string candidate = key.path;
-        const auto name = candidate.find("<name>");
-        const auto wanted = parts_of(path);
-        if (name != std::string::npos && wanted.size() > 2) {
-            candidate.replace(name, 6, wanted[2]);
-        }
-        const std::size_t distance = edits(path, candidate);
-        if (distance < least) {
-            least = distance;
-            best = candidate;
-        }
-    }
-    return best;
+bool is_table(std::string_view path) {
+    return std::any_of(keys().begin(), keys().end(),
+                       [&](const Key& key) { return match(key.path, path) == Match::beginning; });
 }
 
-std::string reference_page() {
-    std::string page = "# Scenario keys\n\nA scenario is a TOML file. Quantities are texts with units (`\"3 "
-                       "kpc\"`); units follow the grammar of the "
-                       "FITS standard. Every key below can also be given on the command line: `--set "
-                       "view.inclination=\"85 deg\"`. This page is "
-                       "made from the table that the reader uses.\n";
-    std::string section;
-    for (const Key& key : keys()) {
-        const std::string top = parts_of(key.path).front();
-        if (top != section) {
-            section = top;
-            page += fmt::format(
-                "\n## [{}]\n\n| key | value | range | default | meaning |\n|---|---|---|---|---|\n", section);
+std::string nearest_key(std::string_view path) {
+    return nearest_of(path, [](const std::string& key) { return std::vector<std::string>{key}; });
+}
+
+std::string nearest_table(std::string_view path) {
+    return nearest_of(path, [](const std::string& key) {
+        std::vector<std::string> tables;
+        for (std::size_t dot = key.find('.'); dot != std::string::npos; dot = key.find('.', dot + 1)) {
+            tables.push_back(key.substr(0, dot));
         }
-        std::string otherwise = key.otherwise.empty() ? "" : key.otherwise;
-        page += fmt::format("| `{}` | {} | {} | {} | {} |\n", key.path, kind_text(key), range_text(key),
-                            otherwise.empty() ? "" : "`" + otherwise + "`", key.help);
-    }
-    return page;
+        return tables;
+    });
 }
 
 } // namespace aureole::scenario

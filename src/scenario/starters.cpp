@@ -18,32 +18,32 @@ object = "INVENTED EDGE-ON"
 # Rings and layers, finer near the plane. Both sides of the plane are alike, so only z >= 0 is stored.
 [grid]
 geometry = "RZ"
-radius = "18 kpc"
+radius = "20 kpc"
 height = "12 kpc"
 cells_r = 60
 cells_z = 80
 smallest_z = "0.04 kpc"
 
-# A spiral field along the disc and a random field with a taller halo.
+# A spiral field along the disc and a random one; together 6.6 uG in the plane at R = 8 kpc.
 [field.ordered]
 profile = "double_exponential"
-value = "5 uG"
-radius = "10 kpc"
+value = "6 uG"
+radius = "15 kpc"
 height = "4 kpc"
 direction = "spiral"
 pitch = "15 deg"
 
 [field.random]
 profile = "double_exponential"
-value = "9 uG"
-radius = "9 kpc"
+value = "11 uG"
+radius = "12 kpc"
 height = "3 kpc"
 
-# Hydrogen nuclei per cm3.
+# Hydrogen nuclei per cm3; about 1 in the plane at R = 8 kpc.
 [gas.hi]
 profile = "sech2"
-value = "1.2 cm-3"
-radius = "7 kpc"
+value = "2.5 cm-3"
+radius = "8 kpc"
 height = "0.3 kpc"
 
 [gas.h2]
@@ -73,11 +73,12 @@ value = "1 eV cm-3"
 radius = "5 kpc"
 height = "4 kpc"
 
-# Electrons (with positrons) whose height shrinks with energy, as losses make it.
+# Electrons (with positrons) whose height shrinks with energy, as losses make it. At R = 8 kpc, 1 GeV, there are
+# 9e-12 per cm3 and GeV, as many as near the Sun (Potgieter et al. 2015, ApJ 810, 141).
 [electrons]
 source = "closed_form"
 spectrum = "broken_power_law"
-norm = "1.5e-11 cm-3 GeV-1"
+norm = "3.5e-11 cm-3 GeV-1"
 reference_energy = "1 GeV"
 slope = 2.2
 break_energy = "3 GeV"
@@ -91,6 +92,7 @@ profile = "double_exponential"
 radius = "6 kpc"
 height = "3 kpc"
 
+# At R = 8 kpc, 10 GeV, about as many protons as near the Sun (Vos & Potgieter 2015, ApJ 815, 119).
 [protons]
 source = "closed_form"
 norm = "1.5e-9 cm-3 GeV-1"
@@ -102,9 +104,9 @@ radius = "7 kpc"
 height = "4 kpc"
 
 [radio]
-frequencies = ["144 MHz", "330 MHz", "790 MHz", "1.5 GHz", "3 GHz", "6 GHz"]
+frequencies = ["144 MHz", "330 MHz", "790 MHz", "1.5 GHz", "3 GHz", "10 GHz"]
 unit = "Jy/beam"
-beam_major = "12 arcsec"
+beam_major = "10 arcsec"
 
 [gamma]
 energies = ["100 MeV", "1 GeV", "10 GeV", "100 GeV"]
@@ -116,7 +118,7 @@ distance = "10 Mpc"
 distance_error = "0.8 Mpc"
 
 [map]
-pixel = "3 arcsec"
+pixel = "2.5 arcsec"
 separate = true
 
 [heights]

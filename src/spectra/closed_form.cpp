@@ -106,15 +106,19 @@ std::function<double(double)> spectral_shape(const Scenario& scenario, Species s
         const double at = scenario.quantity(key + ".break_energy");
         const double above = scenario.number(key + ".slope_above");
         const double width = scenario.number(key + ".break_smoothness");
-        unnormalised = [reference, slope, at, above, width](double t) {
-            return std::pow(t / reference, -slope) *
-                   std::pow(1 + std::pow(t / at, 1 / width), -(above - slope) * width);
+        // ln(1 + (t/at)^(1/width)), which stays finite for the sharpest break.
+        const auto log_bend = [at, width](double t) {
+            const double u = std::log(t / at) / width;
+            return u > 0 ? u + std::log1p(std::exp(-u)) : std::log1p(std::exp(u));
+        };
+        unnormalised = [reference, slope, above, width, log_bend](double t) {
+            return std::exp(-slope * std::log(t / reference) -
+                            (above - slope) * width * (log_bend(t) - log_bend(reference)));
         };
     }
-    const double norm = unnormalised(reference);
-    return [unnormalised, norm, cutoff](double t) {
+    return [unnormalised, cutoff](double t) {
         const double cut = cutoff > 0 ? std::exp(-t / cutoff) : 1;
-        return unnormalised(t) / norm * cut;
+        return unnormalised(t) * cut;
     };
 }
 
@@ -169,6 +173,13 @@ Source from_energy_density(std::vector<float> energy_density,
                 return t * t * shape(t);
             },
             std::log(energy[j]), std::log(energy[j + 1]));
+    }
+    if (!(total > 0) || !std::isfinite(total)) {
+        throw Error(
+            ErrorKind::scenario,
+            fmt::format(
+                "{}: found a spectrum without energy between its nodes, expected a shape above 0 there",
+                key_of(species)));
     }
     std::vector<double> weighted;
     for (const double t : energy) {

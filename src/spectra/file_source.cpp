@@ -10,6 +10,7 @@
 #include <fmt/format.h>
 
 #include <atomic>
+#include <bit>
 #include <cerrno>
 #include <cmath>
 #include <cstring>
@@ -53,11 +54,11 @@ class Descriptor {
     int value_;
 };
 
-[[noreturn]] void refuse_value(const Shared& shared, std::size_t cell, std::size_t node, float value) {
+[[noreturn]] void refuse_value(const Shared& shared, std::size_t cell, std::size_t node, double value) {
     throw Error(
         ErrorKind::input,
         fmt::format(
-            "{}: HDU {}: {}, energy node {}: found {}, expected a finite density that is not negative",
+            "{}: HDU {}: {}, energy node {}: found {:g}, expected a finite density that is not negative",
             shared.path, shared.hdu, grid::cell_text(shared.grid, cell), node + 1, value));
 }
 
@@ -91,9 +92,9 @@ Source::Reader raw_reader(const std::shared_ptr<Shared>& shared) {
         std::uint64_t sum = 0;
         if (!unpack(buffer->data(), count, nodes, shared->scale.data(), weighted, stride, &sum)) {
             for (std::size_t v = 0; v < count * nodes; ++v) {
-                const float value = weighted[v / nodes * stride + v % nodes] / shared->scale[v % nodes];
+                const auto value = std::bit_cast<float>(__builtin_bswap32((*buffer)[v]));
                 if (!std::isfinite(value) || value < 0) {
-                    refuse_value(*shared, first + v / nodes, v % nodes, value);
+                    refuse_value(*shared, first + v / nodes, v % nodes, static_cast<double>(value));
                 }
             }
         }
@@ -104,18 +105,20 @@ Source::Reader raw_reader(const std::shared_ptr<Shared>& shared) {
 
 Source::Reader cfitsio_reader(const std::shared_ptr<Shared>& shared) {
     const auto reader = std::make_shared<FitsReader>(shared->path);
-    const auto buffer = std::make_shared<std::vector<float>>();
+    const auto buffer =
+        std::make_shared<std::vector<double>>(); // 64-bit data may lie below the range of floats
     return
         [shared, reader, buffer](std::size_t first, std::size_t count, float* weighted, std::size_t stride) {
             const std::size_t nodes = shared->nodes;
             buffer->resize(count * nodes);
             reader->read(*reader->find(shared->hdu), first * nodes, count * nodes, buffer->data());
             for (std::size_t v = 0; v < count * nodes; ++v) {
-                const float value = (*buffer)[v];
-                if (!std::isfinite(value) || value < 0) {
+                const double value = (*buffer)[v];
+                const auto scaled = static_cast<float>(value * static_cast<double>(shared->scale[v % nodes]));
+                if (!std::isfinite(scaled) || value < 0) {
                     refuse_value(*shared, first + v / nodes, v % nodes, value);
                 }
-                weighted[v / nodes * stride + v % nodes] = value * shared->scale[v % nodes];
+                weighted[v / nodes * stride + v % nodes] = scaled;
             }
         };
 }
@@ -150,10 +153,9 @@ Source one_hdu(const GridFile& file, const std::string& name, Species species) {
             return;
         }
         bool intact = true;
-        if (raw) {
-            const bool whole = shared->cells_read == shared->grid.stored_cells();
-            intact = !whole || !shared->datasum || *shared->datasum == files::fold_checksum(shared->word_sum);
-        } else {
+        if (raw && shared->cells_read == shared->grid.stored_cells()) {
+            intact = !shared->datasum || *shared->datasum == files::fold_checksum(shared->word_sum);
+        } else { // compressed, or not read exactly once: read again for the checksum
             FitsReader again(shared->path);
             intact = again.verify_checksum(*again.find(shared->hdu)) != false;
         }

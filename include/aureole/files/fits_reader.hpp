@@ -16,7 +16,7 @@ struct HduInfo {
     bool is_image = true;
     int bitpix = 0;                              ///< of the stored image, 0 where there are no data
     std::vector<std::size_t> shape;              ///< NAXISn, first axis (fastest) first
-    bool compressed = false;                     ///< tile-compressed image
+    bool compressed = false;                     ///< tile-compressed, or in a file packed as a whole: no place in the file
     bool lossy = false;                          ///< compressed with quantisation
     bool scaled = false;                         ///< BSCALE or BZERO other than 1 and 0
     std::size_t data_offset = 0, data_bytes = 0; ///< place in the file; without padding
@@ -57,6 +57,7 @@ class FitsReader {
 
   private:
     struct Handle;
+    HduInfo describe_current(int number, bool packed) const;
     void move_to(const HduInfo& hdu);
     void check(int status, const std::string& place) const;
     std::string path_;

@@ -48,12 +48,13 @@ class Scenario {
     /// Whether the file or an override gives it.
     bool is_set(std::string_view key) const;
 
-    // Values by dotted path. Error(scenario) naming the key where it has none.
+    // Values by dotted path. Error(scenario) naming the key where it has none; asking for another type than
+    // the table of keys gives is a programmer's mistake.
     double quantity(std::string_view key) const; ///< CGS
     double number(std::string_view key) const;
     long integer(std::string_view key) const;
     bool boolean(std::string_view key) const;
-    std::string text(std::string_view key) const; ///< text, choice, formula
+    std::string text(std::string_view key) const; ///< text, choice, formula, path as typed; empty where unset
     std::vector<double> quantities(std::string_view key) const;
     std::vector<std::string> texts(std::string_view key) const;
     std::filesystem::path
@@ -65,7 +66,7 @@ class Scenario {
     struct Entry {
         Value value;
         bool given = false;
-        long line = 0; ///< 0: from an override or a default
+        long line = 0, column = 0; ///< from 1; 0: from an override or a default
     };
     const std::map<std::string, Entry, std::less<>>& entries() const { return entries_; }
 
@@ -77,15 +78,18 @@ class Scenario {
 };
 
 /// Reads a scenario file. overrides: "key=value", where the value may stand without quotes
-/// ("view.inclination=85 deg"). Throws Error(scenario) listing every problem with file, line and key;
-/// Error(input) if the file cannot be read.
+/// ("view.inclination=85 deg") and a list without brackets ("radio.frequencies=1.4 GHz, 6 GHz"). Throws
+/// Error(scenario) listing every problem, one a line, as FILE:LINE:COLUMN: KEY: what was found, what was
+/// expected; Error(input) if the file cannot be read.
 Scenario load(const std::filesystem::path& file, std::span<const std::string> overrides);
 
 /// The same from text; `name` stands for the file in messages, its folder resolves relative paths.
 Scenario
 parse(std::string_view text, const std::filesystem::path& name, std::span<const std::string> overrides);
 
-/// The whole scenario with its defaults as valid TOML, which reads back to the same values.
+/// The whole scenario with its defaults as valid TOML, which reads back to the same values; paths become
+/// absolute. A default that gives way to what input.grid holds stands as a comment, since writing it would
+/// overrule the file.
 std::string effective_toml(const Scenario& scenario);
 
 } // namespace aureole::scenario
