@@ -18,6 +18,7 @@
 #include <exception>
 #include <iostream>
 #include <new>
+#include <sstream>
 #include <thread>
 
 namespace aureole::app {
@@ -108,6 +109,26 @@ void print_lines(const std::vector<std::string>& lines) {
     std::fflush(stdout);
 }
 
+/// The text with lines of 80 columns at most: what is longer goes on below where its last column starts.
+std::string wrapped(const std::string& text, std::size_t column) {
+    constexpr std::size_t width = 80;
+    std::string result;
+    std::istringstream lines(text);
+    for (std::string line; std::getline(lines, line);) {
+        const std::size_t indent = line.starts_with(' ') ? column : 0;
+        while (line.size() > width) {
+            const std::size_t blank = line.rfind(' ', width);
+            if (blank == std::string::npos || blank <= indent) {
+                break;
+            }
+            result += line.substr(0, blank) + '\n';
+            line = std::string(indent, ' ') + line.substr(blank + 1);
+        }
+        result += line + '\n';
+    }
+    return result;
+}
+
 int run_predict(const Arguments& arguments, const std::string& command, const RunContext& context) {
     const auto scenario = scenario::load(arguments.scenario_file, arguments.overrides);
     if (arguments.dry_run) {
@@ -158,7 +179,8 @@ int run(int argc, char** argv) {
                  "aureole"};
     app.set_version_flag("--version", std::string("aureole ") + version);
     app.require_subcommand(1);
-    app.get_formatter()->column_width(30);
+    constexpr std::size_t help_column = 30;
+    app.get_formatter()->column_width(help_column);
     app.footer("See 'aureole VERB --help', and aureole(1).");
 
     auto* predict_verb =
@@ -190,6 +212,9 @@ int run(int argc, char** argv) {
 
     try {
         app.parse(argc, argv);
+    } catch (const CLI::CallForHelp&) {
+        fmt::print("{}", wrapped(app.help(), help_column));
+        return 0;
     } catch (const CLI::ParseError& error) {
         return app.exit(error) == 0 ? 0 : static_cast<int>(ErrorKind::usage);
     }
@@ -212,6 +237,7 @@ int run(int argc, char** argv) {
             code = inspect(arguments.file, context);
         } else {
             arguments.heights.command = command;
+            arguments.heights.quiet = arguments.common.quiet;
             code = heights(arguments.heights, context);
         }
         if (std::fflush(stdout) != 0) {

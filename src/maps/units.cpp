@@ -24,6 +24,10 @@ radio_factor(const std::string& unit, double frequency, const std::optional<Beam
     if (unit == "MJy/sr") {
         return 1e-6 / jansky;
     }
+    if (unit == "K" && !(frequency > 0)) {
+        throw Error(ErrorKind::scenario,
+                    fmt::format("found unit \"K\" at {} Hz, expected a frequency above 0", frequency));
+    }
     if (unit == "K") {
         return speed_of_light * speed_of_light / (2 * boltzmann * frequency * frequency);
     }

@@ -3,6 +3,8 @@
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 
+#include <fmt/format.h>
+
 #include <cmath>
 
 namespace aureole::maps {
@@ -15,11 +17,28 @@ using files::Header;
 
 constexpr double rad_to_deg = 1 / constants::degree;
 
+void append(std::vector<Card>& to, const std::vector<Card>& more) {
+    to.insert(to.end(), more.begin(), more.end());
+}
+
+/// The PC matrix of turned pixel axes; version: of the coordinates ("" or "A").
+std::vector<Card> turn_cards(const PixelGrid& pixels, const std::string& version) {
+    if (pixels.rotation == 0) {
+        return {};
+    }
+    const double cosine = std::cos(pixels.rotation);
+    const double sine = std::sin(pixels.rotation);
+    return {{"PC1_1" + version, cosine, ""},
+            {"PC1_2" + version, -sine, ""},
+            {"PC2_1" + version, sine, ""},
+            {"PC2_2" + version, cosine, ""}};
+}
+
 /// The celestial axes, with the turn of the pixel axes as a PC matrix.
 std::vector<Card> celestial_cards(const PixelGrid& pixels) {
     const bool galactic = pixels.frame == "GALACTIC";
     std::vector<Card> cards{
-        {"CTYPE1", (galactic ? "GLON-" : "RA---") + pixels.projection, "gnomonic projection"},
+        {"CTYPE1", (galactic ? "GLON-" : "RA---") + pixels.projection, ""},
         {"CRPIX1", pixels.centre_x + 1, "pixel of the reference point"},
         {"CRVAL1", pixels.lon * rad_to_deg, ""},
         {"CDELT1", pixels.step_x * rad_to_deg, ""},
@@ -30,14 +49,8 @@ std::vector<Card> celestial_cards(const PixelGrid& pixels) {
         {"CDELT2", pixels.step_y * rad_to_deg, ""},
         {"CUNIT2", std::string("deg"), ""},
     };
-    if (pixels.rotation != 0) {
-        const double c = std::cos(pixels.rotation);
-        const double s = std::sin(pixels.rotation);
-        for (Card card :
-             {Card{"PC1_1", c, ""}, Card{"PC1_2", -s, ""}, Card{"PC2_1", s, ""}, Card{"PC2_2", c, ""}}) {
-            cards.push_back(std::move(card));
-        }
-    }
+    append(cards, turn_cards(pixels, ""));
+    cards.push_back({"LONPOLE", 180.0, "deg"});
     if (!galactic) {
         cards.push_back({"RADESYS", pixels.frame, "celestial frame"});
     }
@@ -52,7 +65,7 @@ std::vector<Card> kpc_cards(const PixelGrid& pixels, double distance, int axes) 
         {"CTYPE1A", std::string("OFFSET_X"), "to the West"},
         {"CRPIX1A", pixels.centre_x + 1, ""},
         {"CRVAL1A", 0.0, ""},
-        {"CDELT1A", std::abs(pixels.step_x) * kpc, ""},
+        {"CDELT1A", -pixels.step_x * kpc, ""},
         {"CUNIT1A", std::string("kpc"), ""},
         {"CTYPE2A", std::string("OFFSET_Y"), "to the North"},
         {"CRPIX2A", pixels.centre_y + 1, ""},
@@ -60,6 +73,7 @@ std::vector<Card> kpc_cards(const PixelGrid& pixels, double distance, int axes) 
         {"CDELT2A", pixels.step_y * kpc, ""},
         {"CUNIT2A", std::string("kpc"), ""},
     };
+    append(cards, turn_cards(pixels, "A"));
     if (axes == 3) {
         for (Card card : {Card{"CTYPE3A", std::string("PLANE"), ""}, Card{"CRPIX3A", 1.0, ""},
                           Card{"CRVAL3A", 1.0, ""}, Card{"CDELT3A", 1.0, ""}}) {
@@ -67,10 +81,6 @@ std::vector<Card> kpc_cards(const PixelGrid& pixels, double distance, int axes) 
         }
     }
     return cards;
-}
-
-void append(std::vector<Card>& to, const std::vector<Card>& more) {
-    to.insert(to.end(), more.begin(), more.end());
 }
 
 std::vector<Card> origin_cards(const MapOrigin& origin) {
@@ -105,7 +115,22 @@ std::vector<Card> note_cards(const MapNotes& notes) {
     return cards;
 }
 
+/// Whether one step in ln(energy) leads from each to the next.
+bool is_even_in_log(const std::vector<double>& energies) {
+    for (std::size_t i = 2; i < energies.size(); ++i) {
+        if (std::abs(std::log(energies[i] / energies[i - 1]) / std::log(energies[1] / energies[0]) - 1) >
+            1e-6) {
+            return false;
+        }
+    }
+    return true;
+}
+
 std::vector<Card> beam_cards(const Image& image) {
+    if (!image.beam && image.unit == "Jy/beam") {
+        throw Error(ErrorKind::runtime,
+                    fmt::format("map {}: found the unit Jy/beam without a beam", image.name));
+    }
     if (!image.beam) {
         return {};
     }
@@ -170,18 +195,29 @@ void write_gamma_cube(const std::filesystem::path& path,
         (energies.size() != planes.size() && energies.size() != planes.size() + 1)) {
         throw Error(ErrorKind::runtime, "write_gamma_cube: planes, notes and energies do not go together");
     }
+    for (const Image& plane : planes) {
+        if (plane.pixels != planes.front().pixels || plane.unit != planes.front().unit) {
+            throw Error(ErrorKind::runtime, "write_gamma_cube: planes differ in pixels or unit");
+        }
+    }
     const bool bands = energies.size() == planes.size() + 1;
     const double mev = constants::megaelectronvolt;
     const double first = bands ? std::sqrt(energies[0] * energies[1]) : energies[0];
     const double ratio = energies.size() > 1 ? energies[1] / energies[0] : 10;
     Header header;
     header.cards = celestial_cards(planes.front().pixels);
-    // Exact for energies even in the logarithm; the table is what counts.
-    append(header.cards, {{"CTYPE3", std::string("ENER-LOG"), "see the table for the energies"},
-                          {"CRPIX3", 1.0, ""},
-                          {"CRVAL3", first / mev, ""},
-                          {"CDELT3", first / mev * std::log(ratio), ""},
-                          {"CUNIT3", std::string("MeV"), ""}});
+    if (is_even_in_log(energies)) {
+        append(header.cards, {{"CTYPE3", std::string("ENER-LOG"), "the table holds the energies"},
+                              {"CRPIX3", 1.0, ""},
+                              {"CRVAL3", first / mev, ""},
+                              {"CDELT3", first / mev * std::log(ratio), ""},
+                              {"CUNIT3", std::string("MeV"), ""}});
+    } else {
+        append(header.cards, {{"CTYPE3", std::string("ENERBAND"), "number of a plane; see the table"},
+                              {"CRPIX3", 1.0, ""},
+                              {"CRVAL3", 1.0, ""},
+                              {"CDELT3", 1.0, ""}});
+    }
     append(header.cards, kpc_cards(planes.front().pixels, origin.distance, 3));
     const std::string table = bands ? "EBOUNDS" : "ENERGIES";
     append(header.cards, {{"BUNIT", planes.front().unit, ""},
