@@ -290,8 +290,15 @@ def profiles(folder, summary, _):
     table = table[numbers(table, "strip") == -1]
     if len(table) == 0:
         raise Missing("tables/profiles.ecsv has no profile of all strips as one")
-    names = list(dict.fromkeys(zip(texts(table, "map"), numbers(table, "frequency"))))
-    names = some_of(sorted(names, key=lambda n: n[1] if np.isfinite(n[1]) else np.inf))
+    radio = numbers(table, "frequency") > 0
+    for name, what, rows in (("profiles", "radio", table[radio]), ("gamma_profiles", "gamma-ray", table[~radio])):
+        if len(rows) > 0:
+            yield name, draw_profiles(summary, rows, f"mean {what} intensity against height")
+
+
+def draw_profiles(summary, table, what):
+    names = list(dict.fromkeys(zip(texts(table, "map"), np.nan_to_num(numbers(table, "frequency")))))
+    names = some_of(sorted(names, key=lambda n: n[1]))
     columns = min(len(names), 3) if len(names) != 4 else 2
     bands = -(-len(names) // columns)
     figure = plt.figure(figsize=(0.7 + 3.0 * max(columns, 1.5), 1.2 + 3.1 * bands), constrained_layout=True)
@@ -301,8 +308,8 @@ def profiles(folder, summary, _):
         row, column = divmod(index, columns)
         upper = figure.add_subplot(cells[2 * row, column])
         lower = figure.add_subplot(cells[2 * row + 1, column], sharex=upper)
-        one = (texts(table, "map") == name) & ((numbers(table, "frequency") == frequency) | ~np.isfinite(frequency))
-        profile_panel(upper, lower, table[one], frequency_text(frequency) if np.isfinite(frequency) else name, column == 0)
+        one = (texts(table, "map") == name) & (np.nan_to_num(numbers(table, "frequency")) == frequency)
+        profile_panel(upper, lower, table[one], frequency_text(frequency) if frequency > 0 else name, column == 0)
         legend |= dict(reversed(pair) for pair in zip(*upper.get_legend_handles_labels()))
         if index + columns >= len(names):
             lower.set_xlabel("height (kpc)")
@@ -310,8 +317,8 @@ def profiles(folder, summary, _):
     figure.legend(legend.values(), legend.keys(), loc="lower center", ncol=min(len(legend), 3 if columns < 3 else 5))
     foot = (0.55 if columns < 3 else 0.35) / figure.get_figheight()
     figure.get_layout_engine().set(rect=(0, foot, 1, 1 - foot))
-    title(figure, summary, "mean intensity against height")
-    yield "profiles", figure
+    title(figure, summary, what)
+    return figure
 
 
 def heights(folder, summary, _):

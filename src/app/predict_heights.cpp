@@ -135,6 +135,9 @@ std::optional<BandHeights> measure_band(Band band,
         if (!coarse_images.empty()) {
             add_numerical_errors(result.report, profiles::measure_heights(coarse_images, spec, context));
         }
+        if (band == Band::gamma) {
+            result.report.exponents.clear(); // heights against frequency are a matter of the radio maps
+        }
     } catch (const Error& error) {
         if (error.kind() != ErrorKind::input) {
             throw;

@@ -257,7 +257,7 @@ std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
             lines.push_back("none: " + (*band)->problem);
             continue;
         }
-        const auto more = report::terminal_lines((*band)->report, (*band)->labels);
+        const auto more = report::terminal_lines((*band)->report, (*band)->labels, false);
         lines.insert(lines.end(), more.begin(), more.end());
     }
     if (report.cells_with_fallback > 0) {

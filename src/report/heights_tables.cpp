@@ -207,7 +207,7 @@ model_text(const std::string& model, bool forward, const std::string& side, long
     return text;
 }
 
-std::vector<std::string> height_lines(const std::vector<Line>& lines, bool any_chosen) {
+std::vector<std::string> height_lines(const std::vector<Line>& lines, bool any_chosen, bool each_strip) {
     bool strips = false;
     bool several = false;
     for (const Line& line : lines) {
@@ -222,7 +222,7 @@ std::vector<std::string> height_lines(const std::vector<Line>& lines, bool any_c
         rows.front().emplace_back(name);
     }
     for (const Line& line : lines) {
-        if (any_chosen && !line.chosen) {
+        if ((any_chosen && !line.chosen) || (line.strip >= 0 && !each_strip)) {
             continue;
         }
         std::vector<std::string> row{line.map};
@@ -280,7 +280,7 @@ std::vector<EcsvColumn> profiles_table(const HeightsReport& report,
             height.push_back(z / kpc);
             width.push_back(profile.width[b] / kpc);
             mean.push_back(profile.mean[b]);
-            error.push_back(profile.error(b));
+            error.push_back(profile.errors == profiles::ErrorSource::noiseless ? nothing : profile.error(b));
             model.push_back(row != nullptr && b < row->fit.curve.size() ? row->fit.curve[b] : nothing);
             fitted.push_back(row != nullptr && std::abs(z) >= spec.least_height * (1 - 1e-9) &&
                              std::abs(z) <= spec.greatest_height * (1 + 1e-9) &&
@@ -293,7 +293,8 @@ std::vector<EcsvColumn> profiles_table(const HeightsReport& report,
             {"height", "kpc", "mean height of the bin, from the plane of the galaxy as given", height},
             {"width", "kpc", "top hat with the scatter of heights in the bin", width},
             {"mean", "", "in the unit of the column 'unit'", mean},
-            {"error", "", "in the unit of the column 'unit'; bins are correlated", error},
+            {"error", "", "in the unit of the column 'unit'; bins are correlated; none for a noiseless map",
+             error},
             {"model", "", "best fit of the chosen model, seen with the beam", model},
             {"unit", "", "", unit},
             {"fitted", "", "whether the bin was fitted", fitted}};
@@ -404,9 +405,10 @@ Json exponent_json(const HeightsReport& report) {
                         {"dof", best->dof}};
 }
 
-std::vector<std::string> terminal_lines(const HeightsReport& report, std::span<const std::string> labels) {
+std::vector<std::string>
+terminal_lines(const HeightsReport& report, std::span<const std::string> labels, bool each_strip) {
     const std::vector<Line> table = lines_of(report, labels);
-    std::vector<std::string> lines = height_lines(table, report.chosen.has_value());
+    std::vector<std::string> lines = height_lines(table, report.chosen.has_value(), each_strip);
     const bool several =
         std::any_of(table.begin(), table.end(), [](const Line& line) { return line.component > 0; });
     for (const HeightExponent& exponent : report.exponents) {

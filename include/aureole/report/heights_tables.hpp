@@ -33,9 +33,10 @@ files::Json heights_json(const profiles::HeightsReport& report, std::span<const 
 /// The exponent of the thickest component of the profile of all strips as one; null without one.
 files::Json exponent_json(const profiles::HeightsReport& report);
 
-/// For the terminal: heights of the chosen model (and of every strip), exponents, notes. All lines fit 100
-/// columns except notes.
+/// For the terminal: heights of the chosen model (and, with each_strip, of every strip), exponents, notes.
+/// All lines fit 100 columns except notes.
 std::vector<std::string> terminal_lines(const profiles::HeightsReport& report,
-                                        std::span<const std::string> labels);
+                                        std::span<const std::string> labels,
+                                        bool each_strip = true);
 
 } // namespace aureole::report
