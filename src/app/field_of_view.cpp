@@ -2,6 +2,7 @@
 
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
+#include "aureole/base/units.hpp"
 
 #include <fmt/format.h>
 
@@ -76,6 +77,20 @@ std::optional<maps::Beam> gamma_beam(const scenario::Scenario& scenario) {
 
 maps::PixelGrid
 scenario_pixels(const scenario::Scenario& scenario, const grid::Grid& grid, const sight::View& view) {
+    if (view.projection == sight::Projection::perspective) {
+        const double corner = grid.geometry == grid::Geometry::rz
+                                  ? grid.x.back()
+                                  : std::hypot(std::max(-grid.x.front(), grid.x.back()),
+                                               std::max(-grid.y.front(), grid.y.back()));
+        const double half_diagonal = std::hypot(corner, std::max(-grid.z.front(), grid.z.back()));
+        if (!(view.distance > half_diagonal)) {
+            throw Error(ErrorKind::scenario,
+                        fmt::format("view.distance: found {}, inside the grid; expected an observer beyond "
+                                    "the grid, farther than {:.4g} kpc",
+                                    format_quantity(view.distance, dimension::length),
+                                    half_diagonal / constants::kiloparsec));
+        }
+    }
     const auto extent = half_extent(grid, view);
     const auto radio = radio_beam(scenario);
     const auto gamma = gamma_beam(scenario);

@@ -78,30 +78,32 @@ inline __attribute__((always_inline)) void interpolated_body(const RowTable& row
                                                              const float* __restrict spectrum,
                                                              float* __restrict out) {
     const std::size_t nodes = rows.nodes;
-    const std::size_t order_step = rows.tables * nodes;
+    const std::size_t next = rows.orders * nodes;
     for (std::size_t c = 0; c < channels; ++c) {
-        const float* row = rows.value + first_order * order_step + static_cast<std::size_t>(table[c]) * nodes;
+        const float* row =
+            rows.value + (static_cast<std::size_t>(table[c]) * rows.orders + first_order) * nodes;
+        const auto first_node = static_cast<std::size_t>(rows.first_node[table[c]]);
         Lanes sum{};
         if (orders == 4) {
             const float high0 = fraction[0] * along[c], low0 = fraction[0] - high0;
             const float high1 = fraction[1] * along[c], low1 = fraction[1] - high1;
             const float high2 = fraction[2] * along[c], low2 = fraction[2] - high2;
             const float high3 = fraction[3] * along[c], low3 = fraction[3] - high3;
-            for (std::size_t i = 0; i < nodes; i += 16) {
+            for (std::size_t i = first_node; i < nodes; i += 16) {
                 const float* at = row + i;
-                Lanes even = lanes(at) * low0 + lanes(at + nodes) * high0;
-                at += order_step;
-                Lanes odd = lanes(at) * low1 + lanes(at + nodes) * high1;
-                at += order_step;
-                even += lanes(at) * low2 + lanes(at + nodes) * high2;
-                at += order_step;
-                odd += lanes(at) * low3 + lanes(at + nodes) * high3;
+                Lanes even = lanes(at) * low0 + lanes(at + next) * high0;
+                at += nodes;
+                Lanes odd = lanes(at) * low1 + lanes(at + next) * high1;
+                at += nodes;
+                even += lanes(at) * low2 + lanes(at + next) * high2;
+                at += nodes;
+                odd += lanes(at) * low3 + lanes(at + next) * high3;
                 sum += (even + odd) * lanes(spectrum + i);
             }
         } else {
             const float high = fraction[0] * along[c], low = fraction[0] - high;
-            for (std::size_t i = 0; i < nodes; i += 16) {
-                sum += (lanes(row + i) * low + lanes(row + i + nodes) * high) * lanes(spectrum + i);
+            for (std::size_t i = first_node; i < nodes; i += 16) {
+                sum += (lanes(row + i) * low + lanes(row + i + next) * high) * lanes(spectrum + i);
             }
         }
         out[c] = lane_sum(sum);

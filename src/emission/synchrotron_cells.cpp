@@ -196,8 +196,9 @@ void SynchrotronCells::emit(const FieldSeen& seen,
     const auto amplitude = static_cast<float>(
         1e16 * std::exp((1 + SynchrotronRows::tilt) * (log_field - std::log(constants::microgauss))));
     const OrderPlace order = order_place(rows, seen.order);
-    const kernels::RowTable total{rows.total.data(), rows.tables, rows.stride};
-    const kernels::RowTable polarised{rows.polarised.data(), rows.tables, rows.stride};
+    const kernels::RowTable total{rows.total.data(), rows.order.size(), rows.stride, rows.first_node.data()};
+    const kernels::RowTable polarised{rows.polarised.data(), rows.order.size(), rows.stride,
+                                      rows.first_node.data()};
     const bool with_stokes = !rows.polarised.empty();
     const std::size_t intervals = basis.intervals();
 

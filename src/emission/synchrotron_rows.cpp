@@ -134,6 +134,7 @@ SynchrotronRows synchrotron_rows(
         const auto& table = kernel[row / rows.tables];
         const double u = rows.first + rows.step * static_cast<double>(row % rows.tables);
         const double flatten = std::exp(rows.tilt * u) / rows.unit;
+        const std::size_t place = (row % rows.tables * rows.order.size() + row / rows.tables) * rows.stride;
         std::vector<double> sums(2 * basis.nodes(), 0.0);
         std::vector<double> fallback(2 * basis.intervals() * 4, 0.0);
         for (const Point& point : points) {
@@ -146,10 +147,17 @@ SynchrotronRows synchrotron_rows(
                 fallback[4 * (basis.intervals() + point.interval) + s] += value[1] * point.fallback[s];
             }
         }
+        // Nodes far below the critical energy add nothing that a float could hold.
+        const double least =
+            1e-12 *
+            *std::max_element(sums.begin(), sums.begin() + static_cast<std::ptrdiff_t>(basis.nodes()));
+        for (std::size_t i = 0; i < basis.nodes() && std::abs(sums[i]) < least; ++i) {
+            sums[i] = sums[basis.nodes() + i] = 0;
+        }
         for (std::size_t i = 0; i < basis.nodes(); ++i) {
-            rows.total[row * rows.stride + i] = static_cast<float>(flatten * sums[i]);
+            rows.total[place + i] = static_cast<float>(flatten * sums[i]);
             if (polarised) {
-                rows.polarised[row * rows.stride + i] = static_cast<float>(flatten * sums[basis.nodes() + i]);
+                rows.polarised[place + i] = static_cast<float>(flatten * sums[basis.nodes() + i]);
             }
         }
         for (std::size_t i = 0; i < 4 * basis.intervals(); ++i) {
@@ -167,6 +175,19 @@ SynchrotronRows synchrotron_rows(
             fill(row);
         }
     });
+    rows.first_node.assign(rows.tables, 0);
+    for (std::size_t table = 0; table < rows.tables; ++table) {
+        std::size_t first = rows.nodes;
+        for (std::size_t order = 0; order < rows.order.size(); ++order) {
+            for (std::size_t t = table; t < std::min(table + 2, rows.tables); ++t) {
+                const float* row = rows.total.data() + (t * rows.order.size() + order) * rows.stride;
+                const float* end = row + rows.nodes;
+                first = std::min(first, static_cast<std::size_t>(
+                                            std::find_if(row, end, [](float w) { return w != 0; }) - row));
+            }
+        }
+        rows.first_node[table] = static_cast<int>(first / 16 * 16);
+    }
     return rows;
 }
 

@@ -253,6 +253,10 @@ std::vector<double> cell_averages(const ProfileSpec& profile,
                                   std::size_t first_plane,
                                   std::size_t last_plane,
                                   bool allow_negative) {
+    if (profile.kind == ProfileKind::constant || profile.kind == ProfileKind::none) {
+        const double value = profile.kind == ProfileKind::constant ? profile.value : 0;
+        return std::vector<double>((last_plane - first_plane) * grid.plane_cells(), value);
+    }
     std::vector<double> result;
     if (profile.kind == ProfileKind::file) {
         throw Error(ErrorKind::scenario,

@@ -179,10 +179,10 @@ class Predict(unittest.TestCase):
         self.fails(3, "gas.hi", "unknown name", scenario=SCENARIO.replace('[gas.hi]\nprofile = "double_exponential"', '[gas.hi]\nprofile = "formula"\nformula = "exp(-q)"'))
         self.fails(3, "gas.hi", "finite", scenario=SCENARIO.replace('[gas.hi]\nprofile = "double_exponential"', '[gas.hi]\nprofile = "formula"\nformula = "log(-1-R)"'))
         self.fails(3, "assignment", scenario=SCENARIO.replace('[gas.hi]\nprofile = "double_exponential"', '[gas.hi]\nprofile = "formula"\nformula = "z=5"'))
-        self.fails(3, "inside", scenario=SCENARIO.replace('"10 Mpc"', '"5 kpc"\nprojection = "perspective"'))
+        self.fails(3, "beyond the grid", scenario=SCENARIO.replace('"10 Mpc"', '"5 kpc"\nprojection = "perspective"'))
         self.fails(3, "no channels", scenario=SCENARIO.replace('["150 MHz", "1.4 GHz"]', "[]").replace('["1 GeV"]', "[]"))
-        self.fails(3, "nowhere.toml", arguments=["predict", self.folder / "nowhere.toml", "-o", self.out])
-        self.fails(3, "folder", arguments=["predict", self.folder, "-o", self.out])
+        self.fails(4, "nowhere.toml", arguments=["predict", self.folder / "nowhere.toml", "-o", self.out])
+        self.fails(4, "folder", arguments=["predict", self.folder, "-o", self.out])
 
     def test_bad_grid_files_are_refused_with_code_4(self):
         grid = self.grid_file()

@@ -20,7 +20,8 @@ struct Orientation {
     std::array<double, 3> towards{0, -1, 0}; ///< to the observer
     std::array<double, 3> right{1, 0, 0};    ///< X of the sky plane
     std::array<double, 3> up{0, 0, 1};       ///< Y of the sky plane
-    /// Cosine and sine of twice the position angle of `right` on the sky; `up` lies 90 deg further, through East.
+    /// Cosine and sine of twice the position angle of `right` on the sky; `up` lies 90 deg further, through
+    /// East.
     double cos_double_angle = 1, sin_double_angle = 0;
     std::optional<std::array<double, 3>>
         observer; ///< cm; where set, `towards` is taken from each cell to here

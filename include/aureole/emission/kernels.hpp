@@ -21,11 +21,14 @@ void products(const float* weights,
               float* sums,
               bool portable);
 
-/// Synchrotron weight rows: value[((order * tables + table) * nodes + i)], table counting ln(nu/B) and
-/// `order` how ordered the field is. nodes is a multiple of 16, padded with zeros.
+/// Synchrotron weight rows: value[((table * orders + order) * nodes + i)], table counting ln(nu/B) and
+/// `order` how ordered the field is, so that what one cell needs lies together. nodes is a multiple of 16,
+/// padded with zeros. Before `first_node[table]` (a multiple of 16) a row and the next one are zero for every
+/// order.
 struct RowTable {
     const float* value;
-    std::size_t tables, nodes;
+    std::size_t orders, nodes;
+    const int* first_node;
 };
 
 /// orders is 1 or 4.

@@ -20,10 +20,11 @@ struct SynchrotronRows {
     std::size_t tables = 0;            ///< values of u
     std::size_t nodes = 0, stride = 0; ///< of a row, and its padded length
     std::vector<double> order;         ///< values of t, 0 .. 1
-    std::vector<float> total;          ///< [order][table][stride], times `unit`
+    std::vector<float> total;          ///< [table][order][stride], times `unit`
     std::vector<float> polarised;      ///< the same; empty unless asked for
     std::vector<float> total_fallback; ///< [order][table][interval][4]
     std::vector<float> polarised_fallback;
+    std::vector<int> first_node; ///< [table] before it this row and the next are zero; a multiple of 16
     double unit = 1;
     double beyond = 0; ///< u above which nothing is emitted (x > 700 for the highest energy)
 };
