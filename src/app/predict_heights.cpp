@@ -133,7 +133,8 @@ std::optional<BandHeights> measure_band(Band band,
         }
         result.report = profiles::measure_heights(images, spec, context);
         if (!coarse_images.empty()) {
-            add_numerical_errors(result.report, profiles::measure_heights(coarse_images, spec, context));
+            add_numerical_errors(result.report,
+                                 profiles::measure_heights(coarse_images, spec, context, &result.report));
         }
         if (band == Band::gamma) {
             result.report.exponents.clear(); // heights against frequency are a matter of the radio maps

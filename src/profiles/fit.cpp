@@ -1,7 +1,9 @@
 #include "aureole/profiles/fit.hpp"
 
+#include "refit.hpp"
 #include "whitened.hpp"
 
+#include <Eigen/Eigenvalues>
 #include <fmt/format.h>
 #include <gsl/gsl_errno.h>
 
@@ -49,24 +51,29 @@ problem_of(const Profile& profile, Model model, const FitSpec& spec, const std::
     }
     problem.length = far > 0 ? far : 1;
     problem.peak = peak > 0 ? peak : 1;
-    problem.beam = profile.beam_y / problem.length;
+    BinGeometry& geometry = problem.geometry;
+    geometry.beam = profile.beam_y / problem.length;
     // e-folds over a hundredth of a bin or beam, or a hundred times the range, leave no trace in the data.
-    problem.ln_low = std::log(0.01 * std::max(problem.beam, std::min(thin / problem.length, 1.0)));
+    geometry.least = 0.01 * std::max(geometry.beam, std::min(thin / problem.length, 1.0));
+    problem.ln_low = std::log(geometry.least);
     problem.ln_high = std::log(100.0);
     problem.data.resize(index(bins.size()));
     problem.covariance.resize(index(bins.size()), index(bins.size()));
     for (std::size_t a = 0; a < bins.size(); ++a) {
-        problem.z.push_back(profile.height[bins[a]] / problem.length);
-        problem.width.push_back(profile.width[bins[a]] / problem.length);
+        problem.rows.push_back(index(bins[a]));
         problem.data(index(a)) = profile.mean[bins[a]] / problem.peak;
         for (std::size_t b = 0; b < bins.size(); ++b) {
             problem.covariance(index(a), index(b)) =
                 profile.covariance(index(bins[a]), index(bins[b])) / (problem.peak * problem.peak);
         }
     }
+    for (std::size_t b = 0; b < profile.height.size(); ++b) {
+        geometry.z.push_back(profile.height[b] / problem.length);
+        geometry.width.push_back(profile.width[b] / problem.length);
+    }
     if (spec.disc) {
-        problem.disc = *spec.disc;
-        for (double& offset : problem.disc.offset) {
+        geometry.disc = *spec.disc;
+        for (double& offset : geometry.disc.offset) {
             offset /= problem.length;
         }
     }
@@ -86,21 +93,57 @@ double corrected_criterion(double chi2, std::size_t parameters, double independe
 }
 
 Solution best_solution(const Problem& problem, const Eigen::MatrixXd& white) {
+    // One height: one peak in the scan, so a second start that meets the first settles it. Two: a third.
+    const int enough = problem.parts() == 1 ? 2 : 3;
     Solution best;
+    int agreeing = 0;
     for (const Eigen::VectorXd& start : starting_points(problem, white, 8)) {
         const Solution solution = solve(problem, white, start);
-        const bool better = solution.valid && (!best.valid || solution.chi2 < best.chi2);
-        // One peak in the scan of a single height: a second start that meets the first settles it.
-        const bool settled = problem.parts() == 1 && best.converged && solution.converged &&
-                             std::abs(solution.chi2 - best.chi2) <= 1e-8 * (1 + best.chi2);
-        if (better) {
+        const double tolerance = 1e-8 * (1 + best.chi2);
+        const bool meets =
+            best.converged && solution.converged && std::abs(solution.chi2 - best.chi2) <= tolerance;
+        const bool lower = solution.valid && (!best.valid || solution.chi2 < best.chi2);
+        if (meets) {
+            agreeing += 1;
+        } else if (lower) {
+            agreeing = solution.converged ? 1 : 0;
+        }
+        if (lower) {
             best = solution;
         }
-        if (settled) {
+        if (agreeing >= enough) {
             break;
         }
     }
     return best;
+}
+
+/// Parameters of an earlier fit in the units of the problem.
+Eigen::VectorXd start_from(const HeightResult& earlier, const Problem& problem) {
+    Eigen::VectorXd start = Eigen::VectorXd::Zero(problem.parameters());
+    double below = 0;
+    for (std::size_t c = 0; c < problem.parts(); ++c) {
+        const Component& part = earlier.component[c];
+        start(index(2 * c)) = std::log(part.amplitude / problem.peak);
+        start(index(2 * c + 1)) = std::log(part.h / problem.length - below);
+        below = part.h / problem.length;
+    }
+    if (problem.fit_centre) {
+        start(index(2 * problem.parts())) = earlier.centre / problem.length;
+    }
+    if (problem.fit_background) {
+        start(problem.parameters() - 1) = earlier.background / problem.peak;
+    }
+    return start;
+}
+
+/// The fit from an earlier one's parameters; not converged where that one is of no use.
+Solution solution_near(const Problem& problem, const Eigen::MatrixXd& white, const HeightResult& earlier) {
+    if (!usable(earlier.status) || earlier.component.size() != problem.parts()) {
+        return {};
+    }
+    const Eigen::VectorXd start = start_from(earlier, problem);
+    return start.allFinite() ? solve(problem, white, start) : Solution{};
 }
 
 /// d h_c / d parameters, for errors of the heights.
@@ -122,22 +165,44 @@ double height_error(const Problem& problem, const Solution& solution, std::size_
     return std::sqrt(std::max(0.0, slope.dot(solution.covariance * slope))) * problem.length;
 }
 
-/// Scatter, as a fraction of the model, that makes the residuals of the fixed curve as large as expected.
-double scatter_for(const Problem& problem, const Eigen::VectorXd& curve, double dof) {
-    const Eigen::VectorXd residual = curve - problem.data;
-    const auto excess = [&](double fraction) {
-        Eigen::MatrixXd covariance = problem.covariance;
-        covariance.diagonal() += fraction * fraction * curve.cwiseAbs2();
-        return (whitener(covariance) * residual).squaredNorm() - dof;
+/// x.(1 + s T)^-1.x for a symmetric positive semidefinite tridiagonal matrix T, by elimination.
+double tridiagonal_form(const Eigen::VectorXd& diagonal,
+                        const Eigen::VectorXd& beside,
+                        double s,
+                        const Eigen::VectorXd& x) {
+    double pivot = 1 + s * diagonal(0);
+    double reduced = x(0);
+    double sum = reduced * reduced / pivot;
+    for (Eigen::Index k = 1; k < x.size(); ++k) {
+        const double factor = s * beside(k - 1) / pivot;
+        pivot = 1 + s * diagonal(k) - factor * s * beside(k - 1);
+        reduced = x(k) - factor * reduced;
+        sum += reduced * reduced / pivot;
+    }
+    return sum;
+}
+
+/// Scatter, as a fraction of the model, that makes the residuals of the fixed curve as large as expected:
+/// r.(C + f^2 D)^-1.r = dof with D = diag(curve^2). With white.C.white^T = 1 and white.D.white^T brought to
+/// tridiagonal form once, every f tried costs one elimination.
+double
+scatter_for(const Problem& problem, const Eigen::MatrixXd& white, const Eigen::VectorXd& curve, double dof) {
+    const Eigen::MatrixXd scaled = white * curve.cwiseAbs().asDiagonal();
+    const Eigen::Tridiagonalization<Eigen::MatrixXd> form(scaled * scaled.transpose());
+    const Eigen::VectorXd diagonal = form.diagonal();
+    const Eigen::VectorXd beside = form.subDiagonal();
+    const Eigen::VectorXd residual = form.matrixQ().transpose() * (white * (curve - problem.data)).eval();
+    const auto excess = [&](double ln_fraction) {
+        return tridiagonal_form(diagonal, beside, std::exp(2 * ln_fraction), residual) - dof;
     };
     double low = -14;
     double high = 2;
-    if (excess(std::exp(low)) <= 0) {
+    if (excess(low) <= 0) {
         return 0;
     }
     for (int round = 0; round < 30; ++round) {
         const double middle = 0.5 * (low + high);
-        (excess(std::exp(middle)) > 0 ? low : high) = middle;
+        (excess(middle) > 0 ? low : high) = middle;
     }
     return std::exp(high);
 }
@@ -148,13 +213,14 @@ struct Scattered {
 };
 
 /// Fit with fractional scatter in the weights; weights and curve settle in a few rounds.
-Scattered with_scatter(const Problem& problem, const Solution& first, double dof) {
+Scattered
+with_scatter(const Problem& problem, const Eigen::MatrixXd& white, const Solution& first, double dof) {
     Scattered result{first, 0};
     for (int round = 0; round < 4; ++round) {
-        const Eigen::VectorXd curve =
-            curve_at(problem, result.solution.parameters, problem.z, problem.width, false).value;
-        result.fraction = scatter_for(problem, curve, dof);
-        if (result.fraction == 0) {
+        const double before = result.fraction;
+        const Eigen::VectorXd curve = curve_at(problem, result.solution.parameters, false).value;
+        result.fraction = scatter_for(problem, white, curve, dof);
+        if (result.fraction == 0 || std::abs(result.fraction - before) < 1e-6 * before) {
             return result;
         }
         Eigen::MatrixXd covariance = problem.covariance;
@@ -271,6 +337,12 @@ bool usable(Status status) {
 }
 
 HeightResult fit_height(const Profile& profile, Model model, const FitSpec& spec) {
+    CurveCache cache;
+    return fit_height(profile, model, spec, cache, nullptr);
+}
+
+HeightResult fit_height(
+    const Profile& profile, Model model, const FitSpec& spec, CurveCache& cache, const HeightResult* start) {
     gsl_set_error_handler_off();
     HeightResult result = blank_result(profile, model, spec);
     const auto bins = fitted_bins(profile, spec);
@@ -288,7 +360,14 @@ HeightResult fit_height(const Profile& profile, Model model, const FitSpec& spec
                       "nothing positive to fit, or no errors to fit with");
     }
     const Eigen::MatrixXd white = whitener(problem.covariance);
-    Solution solution = best_solution(problem, white);
+    if (!problem.fit_centre) {
+        problem.table = &cache.table(model, problem.geometry);
+    }
+    Solution solution = start != nullptr ? solution_near(problem, white, *start) : Solution{};
+    const bool followed = solution.converged;
+    if (!followed) {
+        solution = best_solution(problem, white);
+    }
     if (!solution.valid) {
         return failed(std::move(result), Status::not_converged, "no start led to a fit");
     }
@@ -300,8 +379,8 @@ HeightResult fit_height(const Profile& profile, Model model, const FitSpec& spec
         // The weights of a noiseless profile have no scale of their own: the residuals give it.
         solution.covariance *= solution.chi2 / result.dof;
         scattered.solution = solution;
-    } else if (solution.converged && solution.chi2 > result.dof) {
-        scattered = with_scatter(problem, solution, result.dof);
+    } else if (!followed && solution.converged && solution.chi2 > result.dof) {
+        scattered = with_scatter(problem, white, solution, result.dof);
     }
     result.fractional_scatter = scattered.fraction;
     const auto heights = heights_of(problem, solution.parameters);
@@ -329,14 +408,8 @@ HeightResult fit_height(const Profile& profile, Model model, const FitSpec& spec
         unit(problem.parameters() - 1) = problem.peak;
     }
     result.covariance = unit.asDiagonal() * solution.covariance * unit.asDiagonal();
-    std::vector<double> z;
-    std::vector<double> width;
-    for (std::size_t b = 0; b < profile.height.size(); ++b) {
-        z.push_back(profile.height[b] / problem.length);
-        width.push_back(profile.width[b] / problem.length);
-    }
-    const Eigen::VectorXd curve = curve_at(problem, solution.parameters, z, width, false).value;
-    for (std::size_t b = 0; b < z.size(); ++b) {
+    const Eigen::VectorXd curve = full_curve(problem, solution.parameters);
+    for (std::size_t b = 0; b < result.curve.size(); ++b) {
         result.curve[b] = curve(index(b)) * problem.peak;
     }
     set_status(result, problem, solution, profile);

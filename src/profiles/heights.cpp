@@ -1,5 +1,7 @@
 #include "aureole/profiles/heights.hpp"
 
+#include "refit.hpp"
+
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/base/parallel.hpp"
@@ -8,6 +10,8 @@
 
 #include <algorithm>
 #include <cmath>
+#include <map>
+#include <tuple>
 
 namespace aureole::profiles {
 
@@ -73,8 +77,13 @@ void check_alike(std::span<const maps::Image> images) {
     }
 }
 
-void check_spec(const HeightsSpec& spec) {
+void check_spec(const HeightsSpec& spec, std::size_t images) {
     check(spec.profile);
+    if (!spec.rms.empty() && spec.rms.size() != images) {
+        throw Error(ErrorKind::scenario,
+                    fmt::format("heights: found {} values of the noise for {} maps, expected one for each",
+                                spec.rms.size(), images));
+    }
     if (spec.models.empty()) {
         throw Error(ErrorKind::scenario, "heights: no model to fit");
     }
@@ -123,6 +132,11 @@ double finest(const Profile& profile) {
     return std::max(profile.beam_y, 0.3 * bin);
 }
 
+bool same_kernel(const Profile& a, const Profile& b) {
+    return a.x_low == b.x_low && a.x_high == b.x_high && a.beam_x == b.beam_x &&
+           a.height.empty() == b.height.empty() && finest(a) == finest(b);
+}
+
 std::vector<std::optional<DiscKernel>>
 kernels_of(std::span<const maps::Image> images, const HeightsSpec& spec, HeightsReport& report) {
     std::vector<std::optional<DiscKernel>> kernels(report.profiles.size());
@@ -140,7 +154,12 @@ kernels_of(std::span<const maps::Image> images, const HeightsSpec& spec, Heights
     }
     for (std::size_t p = 0; p < kernels.size(); ++p) {
         const Profile& profile = report.profiles[p];
-        if (!profile.height.empty()) {
+        const auto alike =
+            std::find_if(report.profiles.begin(), report.profiles.begin() + static_cast<std::ptrdiff_t>(p),
+                         [&](const Profile& other) { return same_kernel(profile, other); });
+        if (alike != report.profiles.begin() + static_cast<std::ptrdiff_t>(p)) {
+            kernels[p] = kernels[static_cast<std::size_t>(alike - report.profiles.begin())];
+        } else if (!profile.height.empty()) {
             kernels[p] = disc_kernel(spec.profile.inclination, *length, spec.disc->edge_radius, profile.x_low,
                                      profile.x_high, profile.beam_x, finest(profile));
         }
@@ -163,7 +182,9 @@ HeightResult without_fit(const Profile& profile, const Task& task, Status status
 HeightResult run(const Task& task,
                  const Profile& profile,
                  const std::optional<DiscKernel>& kernel,
-                 const HeightsSpec& spec) {
+                 const HeightsSpec& spec,
+                 CurveCache& cache,
+                 const HeightResult* start) {
     if (task.forward && !kernel) {
         return without_fit(profile, task, Status::not_converged, "no scale length for the inclined disc");
     }
@@ -182,7 +203,92 @@ HeightResult run(const Task& task,
     if (task.forward) {
         fit.disc = kernel;
     }
-    return fit_height(profile, task.model, fit);
+    return fit_height(profile, task.model, fit, cache, start);
+}
+
+/// Tasks that see the same bins through the same kernel, map by map: they share their curves.
+std::vector<std::vector<std::size_t>> groups_of(const std::vector<Task>& tasks, const HeightsReport& report) {
+    std::map<std::tuple<int, Side, bool>, std::vector<std::size_t>> groups;
+    for (std::size_t k = 0; k < tasks.size(); ++k) {
+        groups[{report.profiles[tasks[k].profile].strip, tasks[k].side, tasks[k].forward}].push_back(k);
+    }
+    std::vector<std::vector<std::size_t>> made;
+    for (auto& [key, group] : groups) {
+        made.push_back(std::move(group));
+    }
+    return made;
+}
+
+/// The row of an earlier report that has the place and the model of the task; null without one.
+const HeightResult* counterpart(const HeightsReport* start, std::size_t k, const HeightRow& row) {
+    if (start == nullptr || k >= start->rows.size()) {
+        return nullptr;
+    }
+    const HeightRow& earlier = start->rows[k];
+    const bool same = earlier.image == row.image && earlier.strip == row.strip &&
+                      earlier.fit.model == row.fit.model && earlier.fit.side == row.fit.side &&
+                      earlier.fit.forward == row.fit.forward;
+    return same ? &earlier.fit : nullptr;
+}
+
+std::vector<HeightRow> fit_all(const HeightsReport& report,
+                               const std::vector<std::optional<DiscKernel>>& kernels,
+                               const HeightsSpec& spec,
+                               const RunContext& context,
+                               const HeightsReport* start) {
+    const auto tasks = tasks_of(report, spec);
+    const auto groups = groups_of(tasks, report);
+    std::vector<HeightRow> rows(tasks.size());
+    for_each_block(context, groups.size(), [&](std::size_t g) {
+        CurveCache cache;
+        for (const std::size_t k : groups[g]) {
+            const Task& task = tasks[k];
+            const Profile& profile = report.profiles[task.profile];
+            HeightRow& row = rows[k];
+            row.image = profile.image;
+            row.strip = profile.strip;
+            row.profile = task.profile;
+            row.fit.model = task.model;
+            row.fit.side = task.side;
+            row.fit.forward = task.forward;
+            row.fit = run(task, profile, kernels[task.profile], spec, cache, counterpart(start, k, row));
+        }
+    });
+    return rows;
+}
+
+/// Whether the areas and unit covariances of one map serve another.
+bool same_plan(const maps::Image& a, const maps::Image& b, const ProfileSpec& spec) {
+    const auto blank = [](float x, float y) { return std::isfinite(x) == std::isfinite(y); };
+    return spec.noise != NoiseFrom::autocorrelation &&
+           std::equal(a.value.begin(), a.value.end(), b.value.begin(), b.value.end(), blank);
+}
+
+std::vector<Profile>
+measure_profiles(std::span<const maps::Image> images, const HeightsSpec& spec, const RunContext& context) {
+    std::vector<Profile> profiles;
+    std::optional<Plan> shared;
+    std::size_t planned = 0;
+    bool without_noise = false;
+    for (std::size_t image = 0; image < images.size(); ++image) {
+        context.check_interrupt();
+        ProfileSpec of_map = spec.profile;
+        if (!spec.rms.empty()) {
+            of_map.rms = spec.rms[image];
+        }
+        const bool noiseless = of_map.rms && *of_map.rms == 0;
+        if (!shared || without_noise != noiseless || !same_plan(images[planned], images[image], of_map)) {
+            shared = plan(images[image], of_map);
+            planned = image;
+            without_noise = noiseless;
+        }
+        for (Profile& profile : measure(images[image], of_map, *shared)) {
+            profile.image = image;
+            profiles.push_back(std::move(profile));
+        }
+        context.report("profiles", static_cast<double>(image + 1) / static_cast<double>(images.size()));
+    }
+    return profiles;
 }
 
 std::vector<ModelScore> scores_of(const HeightsReport& report, const HeightsSpec& spec) {
@@ -342,150 +448,16 @@ void add_notes(HeightsReport& report, const HeightsSpec& spec) {
 
 } // namespace
 
-CombinedHeight
-combine(std::span<const HeightResult* const> fits, std::span<const double> fluxes, std::size_t component) {
-    CombinedHeight mean;
-    mean.component = component;
-    double flux = 0;
-    double sum = 0;
-    double noise = 0;
-    double scatter = 0;
-    double numerical = 0;
-    bool numerical_known = true;
-    const auto counts = [&](std::size_t k) {
-        return usable(fits[k]->status) && fluxes[k] > 0 && component < fits[k]->component.size() &&
-               !fits[k]->component[component].upper_limit;
-    };
-    for (std::size_t k = 0; k < fits.size(); ++k) {
-        if (!counts(k)) {
-            continue;
-        }
-        const Component& part = fits[k]->component[component];
-        mean.strips += 1;
-        flux += fluxes[k];
-        sum += fluxes[k] * part.h;
-        noise += std::pow(fluxes[k] * part.h_err_noise, 2);
-        scatter += std::pow(fluxes[k] * part.h_err_scatter, 2);
-        numerical += fluxes[k] * part.numerical_error.value_or(0);
-        numerical_known = numerical_known && part.numerical_error.has_value();
-    }
-    if (mean.strips == 0) {
-        mean.h = mean.error = mean.error_scatter = mean.strip_scatter = nothing;
-        return mean;
-    }
-    mean.h = sum / flux;
-    mean.error = std::sqrt(noise) / flux;
-    mean.error_scatter = std::sqrt(scatter) / flux;
-    if (numerical_known) {
-        mean.numerical_error = numerical / flux;
-    }
-    double spread = 0;
-    for (std::size_t k = 0; k < fits.size(); ++k) {
-        if (counts(k)) {
-            spread += fluxes[k] * std::pow(fits[k]->component[component].h - mean.h, 2);
-        }
-    }
-    const auto n = static_cast<double>(mean.strips);
-    mean.strip_scatter = mean.strips > 1 ? std::sqrt(spread / flux * n / (n - 1)) : nothing;
-    return mean;
-}
-
-HeightExponent
-fit_exponent(std::span<const double> frequency, std::span<const double> h, std::span<const double> error) {
-    HeightExponent fit;
-    fit.maps = frequency.size();
-    fit.frequency = fit.h0 = fit.h0_error = fit.eta = fit.eta_error = nothing;
-    double weight = 0;
-    double x_mean = 0;
-    double y_mean = 0;
-    for (std::size_t k = 0; k < frequency.size(); ++k) {
-        if (!(frequency[k] > 0) || !(h[k] > 0) || !(error[k] > 0) || !std::isfinite(h[k] + error[k])) {
-            fit.problem = "a frequency, a height or its error is not positive";
-            return fit;
-        }
-        const double w = std::pow(h[k] / error[k], 2);
-        weight += w;
-        x_mean += w * std::log(frequency[k]);
-        y_mean += w * std::log(h[k]);
-    }
-    if (frequency.size() < 2) {
-        fit.problem = fmt::format("{} heights that can be used, expected 2 or more", frequency.size());
-        return fit;
-    }
-    x_mean /= weight;
-    y_mean /= weight;
-    double xx = 0;
-    double xy = 0;
-    for (std::size_t k = 0; k < frequency.size(); ++k) {
-        const double w = std::pow(h[k] / error[k], 2);
-        const double x = std::log(frequency[k]) - x_mean;
-        xx += w * x * x;
-        xy += w * x * (std::log(h[k]) - y_mean);
-    }
-    if (!(xx > 1e-12 * weight)) {
-        fit.problem = "all maps have one frequency";
-        return fit;
-    }
-    fit.frequency = std::exp(x_mean);
-    fit.h0 = std::exp(y_mean);
-    fit.h0_error = fit.h0 / std::sqrt(weight);
-    fit.eta = xy / xx;
-    fit.eta_error = 1 / std::sqrt(xx);
-    for (std::size_t k = 0; k < frequency.size(); ++k) {
-        const double model = y_mean + fit.eta * (std::log(frequency[k]) - x_mean);
-        fit.chi2 += std::pow((std::log(h[k]) - model) * h[k] / error[k], 2);
-    }
-    fit.dof = static_cast<double>(frequency.size()) - 2;
-    return fit;
-}
-
-std::optional<std::size_t> choose(std::span<const ModelScore> scores) {
-    std::optional<std::size_t> best;
-    std::vector<std::size_t> order(scores.size());
-    for (std::size_t k = 0; k < order.size(); ++k) {
-        order[k] = k;
-    }
-    std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) {
-        return scores[a].parameters < scores[b].parameters;
-    });
-    for (const std::size_t k : order) {
-        if (!std::isfinite(scores[k].aicc)) {
-            continue;
-        }
-        const double needed = best && scores[k].parameters > scores[*best].parameters ? 6 : 0;
-        if (!best || scores[k].aicc < scores[*best].aicc - needed) {
-            best = k;
-        }
-    }
-    return best;
-}
-
-HeightsReport
-measure_heights(std::span<const maps::Image> images, const HeightsSpec& spec, const RunContext& context) {
-    check_spec(spec);
+HeightsReport measure_heights(std::span<const maps::Image> images,
+                              const HeightsSpec& spec,
+                              const RunContext& context,
+                              const HeightsReport* start) {
+    check_spec(spec, images.size());
     check_alike(images);
     HeightsReport report;
-    for (std::size_t image = 0; image < images.size(); ++image) {
-        context.check_interrupt();
-        ProfileSpec of_map = spec.profile;
-        if (!spec.rms.empty()) {
-            of_map.rms = spec.rms.at(image);
-        }
-        for (Profile& profile : measure(images[image], of_map)) {
-            profile.image = image;
-            report.profiles.push_back(std::move(profile));
-        }
-        context.report("profiles", static_cast<double>(image + 1) / static_cast<double>(images.size()));
-    }
+    report.profiles = measure_profiles(images, spec, context);
     const auto kernels = kernels_of(images, spec, report);
-    const auto tasks = tasks_of(report, spec);
-    report.rows.resize(tasks.size());
-    for_each_block(context, tasks.size(), [&](std::size_t k) {
-        const Task& task = tasks[k];
-        const Profile& profile = report.profiles[task.profile];
-        report.rows[k] = {profile.image, profile.strip, task.profile, false,
-                          run(task, profile, kernels[task.profile], spec)};
-    });
+    report.rows = fit_all(report, kernels, spec, context, start);
     report.scores = scores_of(report, spec);
     report.chosen = choose_asked(report.scores, spec);
     if (report.chosen) {

@@ -37,7 +37,7 @@ Eigen::VectorXd copy(const gsl_vector* from) {
 int residuals(const gsl_vector* x, void* data, gsl_vector* f) {
     const auto& fitted = *static_cast<const Fitted*>(data);
     const Problem& problem = *fitted.problem;
-    const Curve curve = curve_at(problem, copy(x), problem.z, problem.width, false);
+    const Curve curve = curve_at(problem, copy(x), false);
     const Eigen::VectorXd residual = *fitted.white * (curve.value - problem.data);
     for (std::size_t k = 0; k < f->size; ++k) {
         gsl_vector_set(f, k, residual(index(k)));
@@ -48,7 +48,7 @@ int residuals(const gsl_vector* x, void* data, gsl_vector* f) {
 int slopes(const gsl_vector* x, void* data, gsl_matrix* jacobian) {
     const auto& fitted = *static_cast<const Fitted*>(data);
     const Problem& problem = *fitted.problem;
-    const Curve curve = curve_at(problem, copy(x), problem.z, problem.width, true);
+    const Curve curve = curve_at(problem, copy(x), true);
     const Eigen::MatrixXd slope = *fitted.white * curve.slope;
     for (std::size_t i = 0; i < jacobian->size1; ++i) {
         for (std::size_t k = 0; k < jacobian->size2; ++k) {
@@ -98,18 +98,39 @@ Eigen::MatrixXd covariance_of(const Eigen::MatrixXd& jacobian) {
     return covariance;
 }
 
+/// Curves of one component of unit amplitude in all bins, with derivatives.
+struct UnitCurve {
+    Eigen::VectorXd value, by_ln_h, by_z;
+};
+
+UnitCurve unit_curve(const Problem& problem, double ln_h, double shift, bool slopes) {
+    if (problem.table != nullptr) {
+        if (!slopes) {
+            return {problem.table->value(ln_h), {}, {}};
+        }
+        CurveTable::Pair pair = problem.table->value_and_slope(ln_h);
+        return {std::move(pair.value), std::move(pair.by_ln_h), {}};
+    }
+    const BinGeometry& geometry = problem.geometry;
+    const double h = std::exp(ln_h);
+    const auto bins = index(geometry.z.size());
+    UnitCurve curve{Eigen::VectorXd(bins), Eigen::VectorXd(bins), Eigen::VectorXd(bins)};
+    for (std::size_t b = 0; b < geometry.z.size(); ++b) {
+        const Shape shape = bin_mean(problem.model, h, geometry.beam, geometry.z[b] - shift,
+                                     geometry.width[b], geometry.disc);
+        curve.value(index(b)) = shape.value;
+        curve.by_ln_h(index(b)) = shape.by_ln_h;
+        curve.by_z(index(b)) = shape.by_z;
+    }
+    return curve;
+}
+
 /// Unit-amplitude curves of the scan, whitened.
 std::vector<Eigen::VectorXd>
 scan_curves(const Problem& problem, const Eigen::MatrixXd& white, const std::vector<double>& ln_h) {
     std::vector<Eigen::VectorXd> curves;
     for (const double value : ln_h) {
-        Eigen::VectorXd curve(index(problem.z.size()));
-        for (std::size_t b = 0; b < problem.z.size(); ++b) {
-            curve(index(b)) = bin_mean(problem.model, std::exp(value), problem.beam, problem.z[b],
-                                       problem.width[b], problem.disc)
-                                  .value;
-        }
-        curves.push_back(white * curve);
+        curves.push_back(white * unit_curve(problem, value, 0, false).value(problem.rows));
     }
     return curves;
 }
@@ -162,11 +183,10 @@ std::vector<double> heights_of(const Problem& problem, const Eigen::VectorXd& pa
     return heights;
 }
 
-Curve curve_at(const Problem& problem,
-               const Eigen::VectorXd& parameters,
-               const std::vector<double>& z,
-               const std::vector<double>& width,
-               bool slopes) {
+namespace {
+
+/// The model in all bins.
+Curve curve_everywhere(const Problem& problem, const Eigen::VectorXd& parameters, bool slopes) {
     const auto parts = problem.parts();
     const auto heights = heights_of(problem, parameters);
     const auto within = [&](std::size_t k, double low, double high) {
@@ -174,35 +194,32 @@ Curve curve_at(const Problem& problem,
     };
     const Eigen::Index centre = index(2 * parts);
     const double shift = problem.fit_centre ? parameters(centre) : 0;
+    const auto bins = index(problem.geometry.z.size());
     Curve curve;
-    curve.value = Eigen::VectorXd::Zero(index(z.size()));
-    curve.slope = Eigen::MatrixXd::Zero(slopes ? index(z.size()) : 0, problem.parameters());
+    curve.value = Eigen::VectorXd::Zero(bins);
+    curve.slope = Eigen::MatrixXd::Zero(slopes ? bins : 0, problem.parameters());
     for (std::size_t c = 0; c < parts; ++c) {
         const double ln_w = std::clamp(parameters(index(2 * c)), -ln_amplitude_bound, ln_amplitude_bound);
         const double amplitude = std::exp(ln_w);
+        const UnitCurve unit = unit_curve(problem, std::log(heights[c]), shift, slopes);
+        curve.value += amplitude * unit.value;
+        if (!slopes) {
+            continue;
+        }
         const double free_w = within(2 * c, -ln_amplitude_bound, ln_amplitude_bound);
         const double free_h = within(2 * c + 1, problem.ln_low, problem.ln_high);
-        for (std::size_t b = 0; b < z.size(); ++b) {
-            const Shape shape =
-                bin_mean(problem.model, heights[c], problem.beam, z[b] - shift, width[b], problem.disc);
-            const auto row = index(b);
-            curve.value(row) += amplitude * shape.value;
-            if (!slopes) {
-                continue;
-            }
-            curve.slope(row, index(2 * c)) = free_w * amplitude * shape.value;
-            if (c == 0) {
-                curve.slope(row, 1) = free_h * amplitude * shape.by_ln_h;
-            } else {
-                // h2 = h1 + difference: both parameters move it.
-                const double first_free = within(1, problem.ln_low, problem.ln_high);
-                const double by_h = amplitude * shape.by_ln_h / heights[c];
-                curve.slope(row, 1) += first_free * by_h * heights[0];
-                curve.slope(row, 3) = free_h * by_h * (heights[1] - heights[0]);
-            }
-            if (problem.fit_centre) {
-                curve.slope(row, centre) -= amplitude * shape.by_z;
-            }
+        curve.slope.col(index(2 * c)) = free_w * amplitude * unit.value;
+        if (c == 0) {
+            curve.slope.col(1) = free_h * amplitude * unit.by_ln_h;
+        } else {
+            // h2 = h1 + difference: both parameters move it.
+            const double first_free = within(1, problem.ln_low, problem.ln_high);
+            const double by_h = amplitude / heights[c];
+            curve.slope.col(1) += (first_free * by_h * heights[0]) * unit.by_ln_h;
+            curve.slope.col(3) = (free_h * by_h * (heights[1] - heights[0])) * unit.by_ln_h;
+        }
+        if (problem.fit_centre) {
+            curve.slope.col(centre) -= amplitude * unit.by_z;
         }
     }
     if (problem.fit_background) {
@@ -212,6 +229,23 @@ Curve curve_at(const Problem& problem,
         }
     }
     return curve;
+}
+
+} // namespace
+
+Curve curve_at(const Problem& problem, const Eigen::VectorXd& parameters, bool slopes) {
+    Curve curve = curve_everywhere(problem, parameters, slopes);
+    if (problem.rows.size() < problem.geometry.z.size()) {
+        curve.value = curve.value(problem.rows).eval();
+        if (slopes) {
+            curve.slope = curve.slope(problem.rows, Eigen::all).eval();
+        }
+    }
+    return curve;
+}
+
+Eigen::VectorXd full_curve(const Problem& problem, const Eigen::VectorXd& parameters) {
+    return curve_everywhere(problem, parameters, false).value;
 }
 
 Eigen::MatrixXd whitener(const Eigen::MatrixXd& covariance) {
@@ -238,7 +272,9 @@ starting_points(const Problem& problem, const Eigen::MatrixXd& white, std::size_
     const double high = problem.ln_high - 1.2;
     std::vector<double> ln_h;
     for (std::size_t k = 0; k < steps; ++k) {
-        ln_h.push_back(low + (high - low) * static_cast<double>(k) / static_cast<double>(steps - 1));
+        // At nodes of the table, where curves cost nothing more.
+        const double even = low + (high - low) * static_cast<double>(k) / static_cast<double>(steps - 1);
+        ln_h.push_back(CurveTable::step * std::round(even / CurveTable::step));
     }
     const auto curves = scan_curves(problem, white, ln_h);
     const Eigen::VectorXd data = white * problem.data;
@@ -291,7 +327,7 @@ Solution solve(const Problem& problem, const Eigen::MatrixXd& white, const Eigen
     int info = 0;
     gsl_multifit_nlinear_driver(80, 1e-11, 1e-11, 0, nullptr, nullptr, &info, workspace.get());
     solution.parameters = copy(gsl_multifit_nlinear_position(workspace.get()));
-    const Curve curve = curve_at(problem, solution.parameters, problem.z, problem.width, true);
+    const Curve curve = curve_at(problem, solution.parameters, true);
     const Eigen::VectorXd residual = white * (curve.value - problem.data);
     const Eigen::MatrixXd jacobian = white * curve.slope;
     solution.chi2 = residual.squaredNorm();

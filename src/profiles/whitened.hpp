@@ -1,5 +1,7 @@
 #pragma once
 
+#include "curves.hpp"
+
 #include "aureole/profiles/fit.hpp"
 
 #include <Eigen/Core>
@@ -12,11 +14,11 @@ namespace aureole::profiles {
 struct Problem {
     Model model = Model::exponential;
     double length = 1, peak = 1;
-    std::vector<double> z, width; ///< [bins]
-    Eigen::VectorXd data;         ///< [bins]
-    Eigen::MatrixXd covariance;   ///< [bins x bins]
-    double beam = 0;
-    DiscKernel disc;
+    BinGeometry geometry;           ///< of all bins of the profile
+    std::vector<Eigen::Index> rows; ///< the fitted bins among them
+    Eigen::VectorXd data;           ///< [fitted bins]
+    Eigen::MatrixXd covariance;     ///< [fitted bins x fitted bins]
+    CurveTable* table = nullptr;    ///< of the geometry; null where the centre is fitted
     double ln_low = 0, ln_high = 0; ///< bounds of ln h
     bool fit_centre = false, fit_background = false;
 
@@ -35,11 +37,10 @@ struct Curve {
     Eigen::VectorXd value;
     Eigen::MatrixXd slope;
 };
-Curve curve_at(const Problem& problem,
-               const Eigen::VectorXd& parameters,
-               const std::vector<double>& z,
-               const std::vector<double>& width,
-               bool slopes);
+Curve curve_at(const Problem& problem, const Eigen::VectorXd& parameters, bool slopes);
+
+/// The model in all bins of the profile.
+Eigen::VectorXd full_curve(const Problem& problem, const Eigen::VectorXd& parameters);
 
 /// Heights of the components, within bounds.
 std::vector<double> heights_of(const Problem& problem, const Eigen::VectorXd& parameters);

@@ -150,6 +150,66 @@ TEST_CASE("a map of an inclined disc gives its height to 1 % with the scale leng
     }
 }
 
+TEST_CASE("a noiseless profile of an inclined disc gives back its heights to 1e-6", "[profiles]") {
+    // The profiles are sums over the kernel of closed forms; the fit goes by its own table of curves.
+    for (const double inclination : {75.0, 88.0}) {
+        for (const double sigma : {0.0, 0.25}) {
+            for (const double strip : {-2.0, 4.0}) {
+                const DiscKernel kernel = disc_kernel(inclination * degree, 4 * kpc, {}, strip * kpc,
+                                                      (strip + 3) * kpc, sigma * kpc, 0.1 * kpc);
+                DiscKernel in_kpc = kernel;
+                for (double& offset : in_kpc.offset) {
+                    offset /= kpc;
+                }
+                for (const Model model : {Model::exponential, Model::gaussian, Model::sech2,
+                                          Model::two_exponential, Model::two_gaussian}) {
+                    const double thin = components(model) == 2 ? 3 : 0;
+                    const auto profile = synthetic::profile(0.25, 8, sigma, [&](double z, double width) {
+                        return thin * bin_mean(kind(model), 0.4, sigma, z, width, in_kpc).value +
+                               bin_mean(kind(model), 2.1, sigma, z, width, in_kpc).value;
+                    });
+                    FitSpec spec;
+                    spec.disc = kernel;
+                    for (const double least : {0.0, 0.7}) {
+                        spec.least_height = least * kpc;
+                        const HeightResult fit = fit_height(profile, model, spec);
+                        INFO(to_string(model) << ", i " << inclination << ", sigma " << sigma << ", strip "
+                                              << strip << ", from " << least << ": " << fit.problem);
+                        REQUIRE(fit.status == Status::ok);
+                        CHECK(fit.halo().h / kpc == Approx(2.1).epsilon(1e-6));
+                        CHECK(fit.halo().amplitude == Approx(1).epsilon(1e-5));
+                        CHECK(fit.component[0].h / kpc == Approx(thin > 0 ? 0.4 : 2.1).epsilon(2e-6));
+                        for (std::size_t b = 0; b < profile.mean.size(); b += 5) {
+                            // The inner bins are predicted where the fit leaves them out.
+                            CHECK(fit.curve[b] == Approx(profile.mean[b]).epsilon(0).margin(1e-5));
+                        }
+                    }
+                }
+            }
+        }
+    }
+}
+
+TEST_CASE("a fit of the inclined disc with its centre free gives back centre and height to 1e-5",
+          "[profiles]") {
+    const DiscKernel kernel =
+        disc_kernel(85 * degree, 4 * kpc, {}, -2 * kpc, 2 * kpc, 0.25 * kpc, 0.25 * kpc);
+    DiscKernel in_kpc = kernel;
+    for (double& offset : in_kpc.offset) {
+        offset /= kpc;
+    }
+    const auto profile = synthetic::profile(0.5, 8, 0.25, [&](double z, double width) {
+        return bin_mean(Model::exponential, 1.3, 0.25, z - 0.2, width, in_kpc).value;
+    });
+    FitSpec spec;
+    spec.disc = kernel;
+    spec.fit_centre = true;
+    const HeightResult fit = fit_height(profile, Model::exponential, spec);
+    REQUIRE(fit.status == Status::ok);
+    CHECK(fit.centre / kpc == Approx(0.2).epsilon(1e-5));
+    CHECK(fit.halo().h / kpc == Approx(1.3).epsilon(1e-5));
+}
+
 TEST_CASE("below 75 deg the edge-on model is refused unless forced", "[profiles]") {
     auto image = synthetic::blank_map(60, 60, 0.25, 1.25);
     auto spec = heights_spec(1, 6.0, 0.75, 6.0);
@@ -216,6 +276,82 @@ TEST_CASE("heights that fall with frequency give their exponent, its error and t
     aureole::RunContext two;
     two.threads = 2;
     CHECK(measure_heights(images, spec, two).exponents[0].eta == report.exponents[0].eta);
+}
+
+TEST_CASE("a report to start from changes no height and leaves nothing out", "[profiles]") {
+    const double fwhm = 0.8;
+    const double pixel = 0.2;
+    synthetic::Normal normal(7);
+    auto spec = heights_spec(3, 2.4, 0.4, 6.0);
+    spec.profile.inclination = 86 * degree;
+    spec.profile.rms = 1;
+    spec.sides = Sides::each;
+    spec.disc = DiscSpec{4 * kpc, {}};
+    std::vector<aureole::maps::Image> images;
+    std::vector<aureole::maps::Image> others;
+    for (const double h : {1.2, 1.5}) {
+        auto image = synthetic::blank_map(44, 68, pixel, fwhm);
+        synthetic::fill(image, spec.profile, [&](double, double y) {
+            return 100 * convolved(Model::exponential, h, fwhm * to_sigma, y).value;
+        });
+        others.push_back(image);
+        const auto noise = synthetic::beam_noise(44, 68, fwhm * to_sigma / pixel, normal);
+        for (std::size_t k = 0; k < noise.size(); ++k) {
+            image.value[k] += static_cast<float>(noise[k]);
+        }
+        images.push_back(image);
+    }
+    const auto first = measure_heights(others, spec, {});
+    const auto plain = measure_heights(images, spec, {});
+    const auto hinted = measure_heights(images, spec, {}, &first);
+    REQUIRE(hinted.rows.size() == plain.rows.size());
+    CHECK(hinted.chosen == plain.chosen);
+    std::size_t compared = 0;
+    std::size_t rough = 0;
+    for (std::size_t r = 0; r < plain.rows.size(); ++r) {
+        const HeightRow& a = plain.rows[r];
+        const HeightRow& b = hinted.rows[r];
+        CHECK((a.image == b.image && a.strip == b.strip && a.fit.model == b.fit.model));
+        // Two components where there is one: the optimum is a valley, and each start its own end of it.
+        if (components(a.fit.model) == 1) {
+            REQUIRE(b.fit.status == a.fit.status);
+            CHECK(b.fit.halo().h == Approx(a.fit.halo().h).epsilon(1e-6));
+            CHECK(b.fit.halo().h_err_noise == Approx(a.fit.halo().h_err_noise).epsilon(1e-5));
+            CHECK(b.fit.halo().h != first.rows[r].fit.halo().h);
+            CHECK(b.fit.halo().h_err_scatter == b.fit.halo().h_err_noise);
+            rough += a.fit.halo().h_err_scatter > a.fit.halo().h_err_noise ? 1 : 0;
+            compared += 1;
+        }
+    }
+    CHECK(compared == 2 * 4 * 2 * 2 * 2);
+    CHECK(rough > 0); // else the skipped scatter would not show
+    // A report of other rows is no start.
+    auto fewer = spec;
+    fewer.models = {Model::gaussian};
+    const auto alone = measure_heights(images, fewer, {}, &first);
+    const auto same = measure_heights(images, fewer, {});
+    CHECK(alone.rows.front().fit.halo().h_err_scatter == same.rows.front().fit.halo().h_err_scatter);
+    aureole::RunContext two;
+    two.threads = 2;
+    const auto threaded = measure_heights(images, spec, two, &first);
+    for (std::size_t r = 0; r < plain.rows.size(); ++r) {
+        CHECK(threaded.rows[r].fit.aicc == hinted.rows[r].fit.aicc);
+    }
+}
+
+TEST_CASE("one noise value too many or too few is an error of the scenario", "[profiles][bad-input]") {
+    auto spec = heights_spec(1, 4, 0.5, 4);
+    const std::vector<aureole::maps::Image> images(2, synthetic::blank_map(40, 40, 0.25, 1));
+    for (const std::size_t count : {1U, 3U}) {
+        spec.rms.assign(count, 0.1);
+        try {
+            measure_heights(images, spec, {});
+            FAIL("accepted " << count);
+        } catch (const aureole::Error& error) {
+            CHECK(error.kind() == aureole::ErrorKind::scenario);
+            CHECK_THAT(error.what(), Catch::Contains(std::to_string(count)) && Catch::Contains("2 maps"));
+        }
+    }
 }
 
 TEST_CASE("maps of unlike beam, pixels or unit are refused by name", "[profiles][bad-input]") {

@@ -17,6 +17,7 @@ namespace aureole::profiles {
 struct DiscKernel {
     double sin_inclination = 1;
     std::vector<double> offset, weight; ///< cm; sum of weights 1
+    bool operator==(const DiscKernel&) const = default;
 };
 
 struct DiscSpec {

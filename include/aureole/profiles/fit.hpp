@@ -78,11 +78,12 @@ struct HeightResult {
 };
 
 /// Generalised least squares: residuals whitened by the Cholesky factor of the covariance, trust region (GSL
-/// multifit_nlinear, scale "more") from the best 8 points of a scan over the heights (20 points, 91 pairs for
-/// two components; one component stops when two starts agree), amplitudes of the scan solved linearly.
-/// Noiseless profiles: errors from the residuals. Never throws for the data: see Status. Accuracy  heights of
-/// noiseless profiles to 1e-6; noisy ones agree with SciPy's curve_fit to 3e-6 of their errors
-///           (tests/outside/scipy_heights.py).
+/// multifit_nlinear, scale "more") from the best points of a scan over the heights (20 points, 91 pairs for
+/// two components; amplitudes solved linearly): eight of them, or until two (two components: three) have met
+/// at the lowest chi2 so far. Curves come from a table in ln h, good to 2e-9 of their peak, except where the
+/// centre is fitted. Noiseless profiles: errors from the residuals. Never throws for the data: see Status.
+/// Accuracy  heights of noiseless profiles to 1e-6; noisy ones agree with SciPy's curve_fit to 3e-6 of their
+/// errors (tests/outside/scipy_heights.py).
 /// Source    AICc: Hurvich & Tsai 1989, Biometrika 76, 297.
 HeightResult fit_height(const Profile& profile, Model model, const FitSpec& spec);
 

@@ -16,7 +16,7 @@ enum class Sides { together, each };
 
 struct HeightsSpec {
     ProfileSpec profile;
-    std::vector<double> rms; ///< map unit, one per map, in place of profile.rms; empty: profile.rms for all
+    std::vector<double> rms;   ///< map unit, one per map, in place of profile.rms; empty: profile.rms for all
     std::vector<Model> models; ///< tried; at least one
     double least_height = 0;   ///< cm; range of |height| fitted, the same for all maps
     double greatest_height = std::numeric_limits<double>::infinity();
@@ -92,9 +92,14 @@ struct HeightsReport {
 /// Model choice: the simplest model unless a richer one lowers the summed AICc by more than 6; among equally
 /// rich ones the lowest. Below 75 deg inclination the edge-on model is refused unless forced; from 75 to 85
 /// deg it carries a note (a naive fit of a disc with hR = 4 h errs by 73, 40 and 11 % at 75, 80, 85 deg).
+/// start  report of nearly the same maps (other cells, say) for the same spec: every fit that has a usable
+///        counterpart there starts from it alone and goes without the scatter (h_err_scatter = h_err_noise);
+///        the others are done as without it. Null: none.
 /// Throws Error(input) if the maps differ in pixels, beam or unit; Error(scenario) for the spec.
-HeightsReport
-measure_heights(std::span<const maps::Image> images, const HeightsSpec& spec, const RunContext& context);
+HeightsReport measure_heights(std::span<const maps::Image> images,
+                              const HeightsSpec& spec,
+                              const RunContext& context,
+                              const HeightsReport* start = nullptr);
 
 /// The parts of the above.
 CombinedHeight
