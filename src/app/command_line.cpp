@@ -83,7 +83,7 @@ std::size_t bytes_of(const std::string& text) {
                                                     {"MB", 1e6},    {"GB", 1e9},       {"TB", 1e12},
                                                     {"KiB", 1024.}, {"MiB", 1048576.}, {"GiB", 1073741824.}};
     for (const auto& [name, size] : units) {
-        if (used > 0 && unit == name && number > 0) {
+        if (used > 0 && unit == name && number > 0 && number * size < 1e18) {
             return static_cast<std::size_t>(number * size);
         }
     }
@@ -234,7 +234,7 @@ int run(int argc, char** argv) {
         } else if (scenario_verb->parsed()) {
             code = run_scenario(arguments);
         } else if (inspect_verb->parsed()) {
-            code = inspect(arguments.file, context);
+            code = inspect(arguments.file, arguments.common.quiet, context);
         } else {
             arguments.heights.command = command;
             arguments.heights.quiet = arguments.common.quiet;

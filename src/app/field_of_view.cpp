@@ -113,7 +113,7 @@ scenario_pixels(const scenario::Scenario& scenario, const grid::Grid& grid, cons
         if (n > 32768) {
             throw Error(ErrorKind::scenario, fmt::format("map.pixel: found {:.4g} arcsec, which makes {:.0f} "
                                                          "pixels along {}, expected at most 32768",
-                                                         pixel * 206264.80624709636, n, key));
+                                                         pixel / constants::arcsecond, n, key));
         }
         return static_cast<std::size_t>(std::max(1.0, n));
     };

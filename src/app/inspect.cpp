@@ -35,13 +35,13 @@ int count_lines(const std::string& text) {
     return 1 + static_cast<int>(std::count(text.begin(), text.end(), '\n'));
 }
 
-int verdict(int problems, ErrorKind kind) {
-    if (problems > 0) {
-        fmt::print("{} problem{} found\n", problems, problems == 1 ? "" : "s");
-        return static_cast<int>(kind);
+int verdict(int problems, ErrorKind kind, bool quiet) {
+    if (!quiet) {
+        fmt::print("{}\n", problems == 0   ? "no problems found"
+                           : problems == 1 ? "1 problem found"
+                                           : fmt::format("{} problems found", problems));
     }
-    fmt::print("no problems found\n");
-    return 0;
+    return problems > 0 ? static_cast<int>(kind) : 0;
 }
 
 void print_edges(const char* name, const std::vector<double>& edges) {
@@ -87,16 +87,7 @@ void print_grid_header(const grid::GridFile& file) {
     }
 }
 
-int inspect_grid(const std::string& path) {
-    grid::GridFile file;
-    try {
-        file = grid::open_grid_file(path);
-    } catch (const Error& error) {
-        print_marked("problem", error.what());
-        return verdict(count_lines(error.what()), error.kind());
-    }
-    print_grid_header(file);
-    const auto contents = grid::examine(file);
+void print_ranges(const grid::GridFile& file, const grid::GridFileContents& contents) {
     for (const auto& range : contents.ranges) {
         const auto& data = file.hdu(range.hdu);
         fmt::print(
@@ -110,10 +101,25 @@ int inspect_grid(const std::string& path) {
     for (const std::string& warning : contents.warnings) {
         print_marked("warning", warning);
     }
+}
+
+int inspect_grid(const std::string& path, bool quiet) {
+    grid::GridFile file;
+    try {
+        file = grid::open_grid_file(path);
+    } catch (const Error& error) {
+        print_marked("problem", error.what());
+        return verdict(count_lines(error.what()), error.kind(), quiet);
+    }
+    const auto contents = grid::examine(file);
+    if (!quiet) {
+        print_grid_header(file);
+        print_ranges(file, contents);
+    }
     for (const std::string& problem : contents.problems) {
         print_marked("problem", problem);
     }
-    return verdict(static_cast<int>(contents.problems.size()), ErrorKind::input);
+    return verdict(static_cast<int>(contents.problems.size()), ErrorKind::input, quiet);
 }
 
 /// What the pixels of an image HDU hold.
@@ -152,24 +158,26 @@ void print_beam(FitsReader& reader, const HduInfo& hdu) {
 }
 
 /// Prints one HDU of any FITS file; returns the problems.
-std::vector<std::string> inspect_hdu(FitsReader& reader, const HduInfo& hdu) {
+std::vector<std::string> inspect_hdu(FitsReader& reader, const HduInfo& hdu, bool quiet) {
     std::vector<std::string> problems;
     const auto place = fmt::format("{}: HDU {}", reader.path(), hdu.name);
     const auto problem = [&](const std::string& what) {
         problems.push_back(fmt::format("{}: {}", place, what));
     };
     try {
-        if (!hdu.is_image) {
-            fmt::print("  {:<18} table\n", hdu.name);
-        } else if (hdu.values() == 0) {
-            fmt::print("  {:<18} header only\n", hdu.name);
-        } else {
+        const bool has_pixels = hdu.is_image && hdu.values() > 0;
+        if (!has_pixels && !quiet) {
+            fmt::print("  {:<18} {}\n", hdu.name, hdu.is_image ? "header only" : "table");
+        }
+        if (has_pixels) {
             const auto tally = tally_pixels(reader, hdu);
             const bool any = tally.least <= tally.greatest;
-            fmt::print("  {:<18} {}  {} {}; {} blank\n", hdu.name, fmt::join(hdu.shape, " x "),
-                       any ? fmt::format("{:.6g} to {:.6g}", tally.least, tally.greatest) : "all blank",
-                       reader.text(hdu, "BUNIT").value_or("(no unit)"), tally.blank);
-            print_beam(reader, hdu);
+            if (!quiet) {
+                fmt::print("  {:<18} {}  {} {}; {} blank\n", hdu.name, fmt::join(hdu.shape, " x "),
+                           any ? fmt::format("{:.6g} to {:.6g}", tally.least, tally.greatest) : "all blank",
+                           reader.text(hdu, "BUNIT").value_or("(no unit)"), tally.blank);
+                print_beam(reader, hdu);
+            }
             if (!any) {
                 problem("found no finite value, expected an image");
             }
@@ -188,21 +196,23 @@ std::vector<std::string> inspect_hdu(FitsReader& reader, const HduInfo& hdu) {
     return problems;
 }
 
-int inspect_fits(const std::string& path) {
+int inspect_fits(const std::string& path, bool quiet) {
     FitsReader reader(path);
     if (reader.text(reader.hdus().front(), "FMTNAME")) {
-        return inspect_grid(path);
+        return inspect_grid(path, quiet);
     }
-    fmt::print("FITS file, {} HDUs\n", reader.hdus().size());
+    if (!quiet) {
+        fmt::print("FITS file, {} HDUs\n", reader.hdus().size());
+    }
     std::vector<std::string> problems;
     for (const HduInfo& hdu : reader.hdus()) {
-        const auto found = inspect_hdu(reader, hdu);
+        const auto found = inspect_hdu(reader, hdu, quiet);
         problems.insert(problems.end(), found.begin(), found.end());
     }
     for (const std::string& problem : problems) {
         print_marked("problem", problem);
     }
-    return verdict(static_cast<int>(problems.size()), ErrorKind::input);
+    return verdict(static_cast<int>(problems.size()), ErrorKind::input, quiet);
 }
 
 std::string joined_quantities(const std::vector<double>& values, const Dimension& dimension) {
@@ -239,19 +249,24 @@ void print_scenario(const scenario::Scenario& scenario) {
                format_quantity(scenario.quantity("view.distance"), dimension::length));
 }
 
-int inspect_scenario(const std::string& path) {
+int inspect_scenario(const std::string& path, bool quiet) {
     try {
         const auto scenario = scenario::load(path, {});
-        print_scenario(scenario);
+        if (!quiet) {
+            print_scenario(scenario);
+        }
         const auto grid_path = scenario.path("input.grid");
         if (!grid_path.empty()) {
-            print_grid_header(grid::open_grid_file(grid_path.string()));
+            const auto file = grid::open_grid_file(grid_path.string());
+            if (!quiet) {
+                print_grid_header(file);
+            }
         }
     } catch (const Error& error) {
         print_marked("problem", error.what());
-        return verdict(count_lines(error.what()), error.kind());
+        return verdict(count_lines(error.what()), error.kind(), quiet);
     }
-    return verdict(0, ErrorKind::scenario);
+    return verdict(0, ErrorKind::scenario, quiet);
 }
 
 enum class Content { fits, text, other };
@@ -283,15 +298,15 @@ Content content_of(const std::string& path) {
 
 } // namespace
 
-int inspect(const std::string& file, const RunContext& context) {
+int inspect(const std::string& file, bool quiet, const RunContext& context) {
     context.check_interrupt();
     int code = 0;
     switch (content_of(file)) {
     case Content::fits:
-        code = inspect_fits(file);
+        code = inspect_fits(file, quiet);
         break;
     case Content::text:
-        code = inspect_scenario(file);
+        code = inspect_scenario(file, quiet);
         break;
     default:
         throw Error(

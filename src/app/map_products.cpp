@@ -16,14 +16,6 @@ namespace {
 
 using emission::Band;
 
-float peak_of(const maps::Image& image) {
-    float peak = 0;
-    for (const float value : image.value) {
-        peak = std::max(peak, std::abs(value));
-    }
-    return peak;
-}
-
 /// The trade's flux of a plane from its integral over the sky in CGS: Jy, or photons cm-2 s-1 (per MeV or
 /// GeV).
 double trade_flux(double cgs, const emission::Channel& channel, const std::string& gamma_unit) {
@@ -57,6 +49,14 @@ std::string file_of(const emission::Plane& plane, const emission::Channel& chann
 
 } // namespace
 
+float peak_of(const maps::Image& image) {
+    float peak = 0;
+    for (const float value : image.value) {
+        peak = std::max(peak, std::abs(value));
+    }
+    return peak;
+}
+
 std::string file_label(const emission::Channel& channel) {
     std::string text = emission::label(channel);
     std::erase(text, ' ');
@@ -72,6 +72,12 @@ MapSettings map_settings(const scenario::Scenario& scenario, const grid::Grid& g
     settings.radio_unit = scenario.text("radio.unit");
     settings.gamma_unit = scenario.text("gamma.unit");
     settings.render.tolerance = scenario.number("map.tolerance");
+    const std::string pion_model = scenario.text("emission.pion_model");
+    // Steps at the borders of the published regimes, or coefficients that nothing outside has confirmed.
+    const bool unverified = pion_model != "kafexhiu_2014_continuous" && pion_model != "kelner_2006";
+    settings.gamma_cards = {{"PIONMOD", pion_model, "p + p -> gamma, by author and year"},
+                            {"PIONVER", std::string(unverified ? "UNVERIFIED" : "CHECKED"), "energy fraction across regime borders"},
+                            {"NUCENH", scenario.number("emission.nuclear_enhancement"), "nuclei over p + p"}};
     return settings;
 }
 
@@ -125,6 +131,9 @@ std::vector<MapProduct> make_maps(const emission::Emitted& emitted,
             notes.flux_outside = planes[p].is_signed ? 0 : rendered.flux_outside[p] / expected;
         }
         notes.error_sight = rendered.sampling_error[p];
+        if (!radio) {
+            notes.more = settings.gamma_cards;
+        }
         if (planes[p].process == "total") {
             notes.error_energy = emitted.report.planes[p].energy_error;
             notes.missing = emitted.report.planes[p].missing_above + emitted.report.planes[p].missing_below;

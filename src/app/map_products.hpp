@@ -29,12 +29,12 @@ struct MapSettings {
     std::optional<maps::Beam> radio_beam, gamma_beam;
     std::string radio_unit, gamma_unit;
     maps::RenderOptions render;
+    std::vector<files::Card> gamma_cards; ///< which parametrisations are behind a gamma-ray map
 };
 
 MapSettings map_settings(const scenario::Scenario& scenario, const grid::Grid& grid);
 
-/// Renders, smooths and converts all planes. `emitted` may lose its emissivity values to save memory once
-/// rendered.
+/// Renders, smooths and converts all planes.
 std::vector<MapProduct> make_maps(const emission::Emitted& emitted,
                                   const std::vector<emission::Channel>& channels,
                                   const MapSettings& settings,
@@ -44,6 +44,9 @@ std::vector<MapProduct> make_maps(const emission::Emitted& emitted,
 /// difference of the maps, sight lines from the sampling, energy nodes from the emission. All relative to the
 /// peak.
 void estimate_errors(std::vector<MapProduct>& fine, const std::vector<MapProduct>& coarse);
+
+/// Largest absolute value of a map; blanks do not count.
+float peak_of(const maps::Image& image);
 
 /// File name part of a channel: "144MHz", "1GeV", "1-10GeV".
 std::string file_label(const emission::Channel& channel);

@@ -19,6 +19,8 @@
 #include <algorithm>
 #include <chrono>
 #include <cmath>
+#include <initializer_list>
+#include <tuple>
 
 namespace aureole::app {
 
@@ -162,9 +164,15 @@ std::vector<std::string> warnings_of(const emission::EmissionReport& report,
                                      const std::vector<MapProduct>& products,
                                      const MapSettings& settings,
                                      const std::optional<grid::GridFile>& file) {
-    std::vector<std::string> warnings = report.warnings;
+    std::vector<std::string> warnings;
     if (file) {
         warnings.insert(warnings.end(), file->warnings.begin(), file->warnings.end());
+    }
+    if (file && file->has("CR_HELIUM")) {
+        warnings.push_back(
+            fmt::format("{}: HDU CR_HELIUM is not used; emission.nuclear_enhancement stands for "
+                        "nuclei heavier than hydrogen",
+                        file->path));
     }
     if (report.share_below_gamma_10 > 1e-3) {
         warnings.push_back(fmt::format("up to {:.2g} % of the inverse-Compton emission of a channel comes "
@@ -176,6 +184,12 @@ std::vector<std::string> warnings_of(const emission::EmissionReport& report,
     for (const MapProduct& product : products) {
         if (product.plane.process != "total") {
             continue;
+        }
+        if (!(product.luminosity > 0)) {
+            warnings.push_back(fmt::format("{}: nothing is emitted; {} missing or 0", product.label,
+                                           product.plane.band == Band::radio
+                                               ? "electrons or the field are"
+                                               : "particles, gas and radiation are"));
         }
         if (product.notes.missing > worth_saying) {
             warnings.push_back(fmt::format("{}: {:.2g} % of the emission is missing because the spectra end, "
@@ -203,6 +217,108 @@ std::vector<std::string> warnings_of(const emission::EmissionReport& report,
     return warnings;
 }
 
+/// Whether the heights of a species' closed form change with energy: every energy of every cell is then held.
+bool holds_spectra(const scenario::Scenario& scenario, const std::string& species) {
+    return scenario.text(species + ".source") == "closed_form" &&
+           scenario.number(species + ".height_slope") != 0;
+}
+
+/// Media and spectra that are held.
+std::size_t bytes_per_stored_cell(const Inputs& inputs, const scenario::Scenario& scenario) {
+    const auto in_file = [&](const char* hdu) { return inputs.file && inputs.file->has(hdu); };
+    const auto given = [&](const char* key, const char* hdu) {
+        return in_file(hdu) || scenario.profile(key).kind != scenario::ProfileKind::none;
+    };
+    std::size_t values = scenario.names("radiation.component").size();
+    for (const auto& [key, hdu, size] :
+         std::initializer_list<std::tuple<const char*, const char*, std::size_t>>{
+             {"field.ordered", "B_VECTOR", 4},
+             {"field.random", "B_TURB", 1},
+             {"gas.hi", "GAS_HI", 1},
+             {"gas.h2", "GAS_H2", 1},
+             {"gas.hii", "GAS_HII", 1},
+             {"gas.electrons", "N_E", 1},
+             {"gas.temperature", "T_E", 1},
+             {"turbulence.speed", "V_TURB", 1},
+             {"turbulence.scale", "L_TURB", 1}}) {
+        values += given(key, hdu) ? size : 0;
+    }
+    values += in_file("VELOCITY") ? 3 : 0;
+    values += in_file("RADIATION") ? inputs.file->axes.at("EPS_PHOTON").size() : 0;
+    for (const char* species : {"electrons", "protons"}) {
+        values += holds_spectra(scenario, species)
+                      ? static_cast<std::size_t>(scenario.integer(std::string(species) + ".energy_nodes"))
+                      : 1;
+    }
+    constexpr std::size_t volumes = 8;
+    return values * sizeof(float) + volumes;
+}
+
+std::size_t total_bytes(const Plan& plan, std::size_t per_stored_cell, const RunContext& context) {
+    const std::size_t pixels = plan.pixels_x * plan.pixels_y;
+    const std::size_t images = 3 * pixels * plan.planes * sizeof(float);
+    constexpr std::size_t smoothing_per_pixel = 64; // padded transforms of one plane
+    constexpr std::size_t program_and_tables = 30U << 20U;
+    return plan.emissivity_bytes + images + plan.stored_cells * per_stored_cell +
+           smoothing_per_pixel * pixels * static_cast<std::size_t>(std::max(1, context.threads)) +
+           program_and_tables;
+}
+
+double narrowest(const std::vector<double>& edges) {
+    double width = edges[1] - edges[0];
+    for (std::size_t i = 2; i < edges.size(); ++i) {
+        width = std::min(width, edges[i] - edges[i - 1]);
+    }
+    return width;
+}
+
+/// Seconds of one core to average profiles over the cells: those that are no products of R and z are sampled.
+double averaging_seconds(const Inputs& inputs, const scenario::Scenario& scenario) {
+    using scenario::ProfileKind;
+    const auto stored = static_cast<double>(inputs.grid.stored_cells());
+    const auto cost = [&](const std::string& key) {
+        const auto profile = scenario.profile(key);
+        const bool sampled = profile.flare > 0 || profile.kind == ProfileKind::beta ||
+                             profile.kind == ProfileKind::power_law || profile.kind == ProfileKind::formula;
+        const double sample = inputs.grid.geometry == grid::Geometry::xyz ? 5e-7 : 2e-7;
+        return stored * (sampled ? sample : 5e-9);
+    };
+    double sum = 0;
+    for (const char* key : {"field.ordered", "field.random", "gas.hi", "gas.h2", "gas.hii"}) {
+        sum += cost(key);
+    }
+    for (const std::string& name : scenario.names("radiation.component")) {
+        sum += cost("radiation.component." + name);
+    }
+    for (const std::string species : {"electrons", "protons"}) {
+        const double times = holds_spectra(scenario, species)
+                                 ? static_cast<double>(scenario.integer(species + ".energy_nodes"))
+                                 : 1;
+        sum += times * cost(species + ".space");
+    }
+    return sum;
+}
+
+/// Seconds of one core of 2.6 GHz; the factors are measured on the starters and a grid of 128^3 cells, where
+/// the sum is good to a factor of 1.5.
+double seconds(const Plan& plan, const Inputs& inputs, const scenario::Scenario& scenario) {
+    const auto planes = static_cast<double>(plan.planes);
+    const auto pixels = static_cast<double>(plan.pixels_x * plan.pixels_y);
+    const double media = averaging_seconds(inputs, scenario);
+    const double emission = 0.45 + 2.6e-8 * static_cast<double>(plan.cells) * planes;
+    // Cells narrower than a pixel are met by more rays.
+    const double pixel = inputs.settings.pixels.step_y * inputs.settings.view.distance;
+    const double cell = std::min(narrowest(inputs.grid.x), narrowest(inputs.grid.z));
+    const double rays = 1 + 2 * std::max(0.0, pixel / cell - 1);
+    const double maps = 2.8e-9 * pixels * planes * std::cbrt(static_cast<double>(plan.cells)) * rays;
+    const auto totals = static_cast<double>(inputs.channels.size());
+    const double fits = static_cast<double>(scenario.integer("heights.strips") + 1) *
+                        static_cast<double>(scenario.texts("heights.models").size());
+    const double heights = totals * (6e-8 * pixels + 3.5e-3 * fits);
+    const bool twice = scenario.boolean("accuracy.estimate");
+    return media + (twice ? 1.5 : 1.0) * (emission + maps) + (twice ? 2 : 1) * heights;
+}
+
 } // namespace
 
 Plan plan(const scenario::Scenario& scenario, const RunContext& context) {
@@ -217,16 +333,8 @@ Plan plan(const scenario::Scenario& scenario, const RunContext& context) {
     plan.pixels_y = inputs.settings.pixels.ny;
     plan.pixel_arcsec = inputs.settings.pixels.step_y / constants::arcsecond;
     plan.emissivity_bytes = plan.cells * plan.planes * sizeof(float);
-    const std::size_t image_bytes = plan.pixels_x * plan.pixels_y * plan.planes * sizeof(float);
-    constexpr std::size_t media_bytes_per_cell = 48;
-    plan.total_bytes =
-        plan.emissivity_bytes + 3 * image_bytes + plan.stored_cells * media_bytes_per_cell + (100U << 20U);
-    // Measured on one core of 2.6 GHz: see docs/performance.md.
-    const double threads = std::max(1, context.threads);
-    const double work = 6e-9 * static_cast<double>(plan.cells * plan.planes) +
-                        1.5e-9 * static_cast<double>(plan.pixels_x * plan.pixels_y * plan.planes) *
-                            std::cbrt(static_cast<double>(plan.cells));
-    plan.seconds = (0.3 + 2 * work) / threads * (scenario.boolean("accuracy.estimate") ? 1.6 : 1.0);
+    plan.total_bytes = total_bytes(plan, bytes_per_stored_cell(inputs, scenario), context);
+    plan.seconds = seconds(plan, inputs, scenario) / std::max(1, context.threads);
     for (const Channel& channel : inputs.channels) {
         if (channel.band == Band::radio) {
             plan.files.push_back("maps/radio_" + file_label(channel) + ".fits");
@@ -285,7 +393,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
         emission::emit(inputs.grid, media, sources, inputs.channels, inputs.processes, orientation, context);
     note_timing(context, "emission", since);
     auto products = make_maps(emitted, inputs.channels, inputs.settings, context);
-    emitted.emissivity.value = {};
+    std::vector<float>().swap(emitted.emissivity.value); // = {} would keep the memory
     note_timing(context, "maps", since);
 
     std::vector<MapProduct> coarse;

@@ -22,14 +22,6 @@ using files::Json;
 
 constexpr double nothing = std::numeric_limits<double>::quiet_NaN();
 
-float peak_of(const maps::Image& image) {
-    float peak = 0;
-    for (const float value : image.value) {
-        peak = std::max(peak, std::abs(value));
-    }
-    return peak;
-}
-
 double luminosity_factor(const emission::Channel& channel) {
     // Radio: erg s-1 Hz-1. Gamma: photons per second, per GeV where the channel is no band.
     return channel.band == Band::gamma && !channel.is_band() ? constants::gigaelectronvolt : 1;

@@ -1,5 +1,7 @@
 #include "emission_check.hpp"
 
+#include "synchrotron_kernel.hpp"
+
 #include "aureole/base/constants.hpp"
 #include "aureole/base/parallel.hpp"
 #include "aureole/physics/kinematics.hpp"
@@ -61,10 +63,10 @@ double emission_of(const WeightRow& row, const Basis& basis, const std::vector<d
     return sum;
 }
 
-/// Every second node, and the last.
-std::vector<std::size_t> half_nodes(std::size_t nodes) {
-    std::vector<std::size_t> kept;
-    for (std::size_t i = 0; i < nodes; i += 2) {
+/// Every second node from `start` (0 or 1) on, the first and the last.
+std::vector<std::size_t> half_nodes(std::size_t nodes, std::size_t start) {
+    std::vector<std::size_t> kept{0};
+    for (std::size_t i = start == 0 ? 2 : 1; i < nodes; i += 2) {
         kept.push_back(i);
     }
     if (kept.back() != nodes - 1) {
@@ -86,7 +88,16 @@ double end_slope(const Basis& basis, const std::vector<double>& m, bool above) {
 }
 
 struct Contribution {
-    double full = 0, half = 0, above = 0, below = 0, slow = 0;
+    double full = 0, above = 0, below = 0, slow = 0;
+    double change = 0; // largest under halved nodes; changes of several contributions add up without sign
+
+    void add(const Contribution& one, double weight) {
+        full += weight * one.full;
+        change += weight * one.change;
+        above += weight * one.above;
+        below += weight * one.below;
+        slow += weight * one.slow;
+    }
 };
 
 /// What one kernel makes of one mean spectrum, per unit weight.
@@ -99,14 +110,17 @@ Contribution contribution(const Basis& basis,
     constexpr double decades_down = 3;
     Contribution result;
     result.full = emission_of(integrate_kernel(basis, kernel, splits, points), basis, mean.value);
-    std::vector<double> energy;
-    std::vector<double> value;
-    for (const std::size_t i : half_nodes(basis.nodes())) {
-        energy.push_back(basis.energy()[i]);
-        value.push_back(mean.value[i]);
+    for (const std::size_t start : {0U, 1U}) {
+        std::vector<double> energy;
+        std::vector<double> value;
+        for (const std::size_t i : half_nodes(basis.nodes(), start)) {
+            energy.push_back(basis.energy()[i]);
+            value.push_back(mean.value[i]);
+        }
+        const Basis half(energy);
+        const double coarse = emission_of(integrate_kernel(half, kernel, splits, points), half, value);
+        result.change = std::max(result.change, std::abs(coarse - result.full));
     }
-    const Basis half(energy);
-    result.half = emission_of(integrate_kernel(half, kernel, splits, 2 * points), half, value);
     if (mean.value.back() > 0) {
         result.above = mean.value.back() * tail_weight(basis, kernel, splits,
                                                        end_slope(basis, mean.value, true), true, decades_up);
@@ -138,18 +152,32 @@ std::vector<PlaneReport> luminosities(const Emissivity& emissivity) {
     return reports;
 }
 
-double check_spectra(std::vector<PlaneReport>& planes,
-                     const grid::Grid& grid,
-                     const media::Media& media,
-                     const ProductPlan& plan,
-                     const std::vector<Source>& sources,
-                     const std::vector<Channel>& channels,
-                     bool synchrotron,
-                     const RunContext& context) {
-    const auto volume = grid::cell_volumes(grid);
-    const std::size_t step = std::max<std::size_t>(1, grid.stored_cells() / sample_cells);
+namespace {
 
-    // The last mean spectrum belongs to synchrotron emission.
+/// Cells that stand for all: about one in `step`, each at another place of its stretch, so that the columns
+/// of a grid whose rows divide the step are met alike.
+std::vector<std::size_t> cells_to_sample(std::size_t cells) {
+    constexpr double golden = 0.6180339887498949;
+    const std::size_t step = std::max<std::size_t>(1, cells / sample_cells);
+    std::vector<std::size_t> chosen;
+    for (std::size_t n = 0; n * step < cells; ++n) {
+        const double turns = golden * static_cast<double>(n);
+        const auto within = static_cast<std::size_t>((turns - std::floor(turns)) * static_cast<double>(step));
+        if (n * step + within < cells) {
+            chosen.push_back(n * step + within);
+        }
+    }
+    return chosen;
+}
+
+/// One for each term of the plan; the last belongs to synchrotron emission.
+std::vector<MeanSpectrum> mean_spectra(const grid::Grid& grid,
+                                       const media::Media& media,
+                                       const ProductPlan& plan,
+                                       const std::vector<Source>& sources,
+                                       bool synchrotron) {
+    const auto volume = grid::cell_volumes(grid);
+    const auto chosen = cells_to_sample(grid.stored_cells());
     std::vector<MeanSpectrum> means(plan.terms.size() + 1);
     for (const Source& source : sources) {
         const auto reader = source.open();
@@ -162,7 +190,7 @@ double check_spectra(std::vector<PlaneReport>& planes,
             mean.weight += weight;
             mean.field += weight * field;
         };
-        for (std::size_t cell = 0; cell < grid.stored_cells(); cell += step) {
+        for (const std::size_t cell : chosen) {
             reader(cell, 1, spectrum.data(), spectrum.size());
             for (std::size_t t = 0; t < plan.terms.size(); ++t) {
                 if (plan.kernels[plan.terms[t].kernel].species == source.species) {
@@ -183,63 +211,83 @@ double check_spectra(std::vector<PlaneReport>& planes,
             mean.field /= mean.weight;
         }
     }
+    return means;
+}
+
+/// The kernel is that of a random field: what is ordered points everywhere in the mean over the galaxy.
+Contribution synchrotron_contribution(const Basis& basis,
+                                      const MeanSpectrum& mean,
+                                      const KernelTable& random_field,
+                                      const Channel& channel) {
+    const double log_x1 = std::log(channel.centre() / (physics::synchrotron_critical_constant * mean.field));
+    const auto kernel = [&](double kinetic) {
+        const double gamma = physics::lorentz_factor(kinetic, constants::electron_rest_energy);
+        return random_field.at(log_x1 - 2 * std::log(gamma))[0];
+    };
+    return contribution(basis, mean, kernel, {});
+}
+
+Contribution product_contribution(const Basis& basis,
+                                  const MeanSpectrum& mean,
+                                  const ProductKernel& kernel,
+                                  bool is_inverse_compton,
+                                  const Channel& channel) {
+    Contribution sum;
+    const auto photons = channel_photons(channel);
+    for (std::size_t p = 0; p < photons.x.size(); ++p) {
+        const double photon = photons.x[p];
+        const auto value = [&](double kinetic) { return kernel.value(kinetic, photon); };
+        Contribution one = contribution(basis, mean, value, kernel.splits(photon));
+        if (is_inverse_compton) {
+            const double limit = 9 * constants::electron_rest_energy;
+            const auto slow_part = [&](double kinetic) { return kinetic < limit ? value(kinetic) : 0.0; };
+            one.slow = emission_of(integrate_kernel(basis, slow_part, std::vector<double>{limit}, 6), basis,
+                                   mean.value);
+        }
+        sum.add(one, photons.w[p]);
+    }
+    return sum;
+}
+
+} // namespace
+
+double check_spectra(std::vector<PlaneReport>& planes,
+                     const grid::Grid& grid,
+                     const media::Media& media,
+                     const ProductPlan& plan,
+                     const std::vector<Source>& sources,
+                     const std::vector<Channel>& channels,
+                     bool synchrotron,
+                     const RunContext& context) {
+    const auto means = mean_spectra(grid, media, plan, sources, synchrotron);
     const auto basis_of = [&](Species species) -> const Basis& {
         return *std::find_if(sources.begin(), sources.end(), [&](const Source& s) {
                     return s.species == species;
                 })->basis;
     };
-
+    const KernelTable random_field = synchrotron ? kernel_table(0) : KernelTable{};
     std::vector<double> slow(channels.size(), 0.0);
     for_each_block(context, channels.size(), [&](std::size_t c) {
         const Channel& channel = channels[c];
         Contribution sum;
-        const auto add = [&](const Contribution& one, double weight) {
-            sum.full += weight * one.full;
-            sum.half += weight * one.half;
-            sum.above += weight * one.above;
-            sum.below += weight * one.below;
-            sum.slow += weight * one.slow;
-        };
-        if (channel.band == Band::radio) {
-            const MeanSpectrum& mean = means.back();
-            if (mean.weight > 0) {
-                const double critical = physics::synchrotron_critical_constant * mean.field;
-                add(contribution(basis_of(Species::electrons), mean,
-                                 [&](double kinetic) {
-                                     const double gamma =
-                                         physics::lorentz_factor(kinetic, constants::electron_rest_energy);
-                                     return physics::synchrotron_random(channel.centre() /
-                                                                        (critical * gamma * gamma));
-                                 },
-                                 {}),
-                    1);
-            }
-        } else {
-            for (std::size_t t = 0; t < plan.terms.size(); ++t) {
-                if (!(means[t].weight > 0)) {
-                    continue;
-                }
+        if (channel.band == Band::radio && means.back().weight > 0) {
+            sum = synchrotron_contribution(basis_of(Species::electrons), means.back(), random_field, channel);
+        }
+        for (std::size_t t = 0; t < plan.terms.size() && channel.band == Band::gamma; ++t) {
+            if (means[t].weight > 0) {
                 const ProductKernel& kernel = plan.kernels[plan.terms[t].kernel];
-                const auto value = channel_kernel(kernel, channel);
-                Contribution one =
-                    contribution(basis_of(kernel.species), means[t], value, channel_splits(kernel, channel));
-                if (plan.terms[t].process.starts_with("inverse_compton")) {
-                    const double limit = 9 * constants::electron_rest_energy;
-                    one.slow = emission_of(
-                        integrate_kernel(
-                            basis_of(kernel.species),
-                            [&](double kinetic) { return kinetic < limit ? value(kinetic) : 0.0; },
-                            std::vector<double>{limit}, 6),
-                        basis_of(kernel.species), means[t].value);
-                }
-                add(one, means[t].weight);
+                sum.add(product_contribution(basis_of(kernel.species), means[t], kernel,
+                                             plan.terms[t].process.starts_with("inverse_compton"), channel),
+                        means[t].weight);
             }
         }
-        constexpr double coarsening = 10;
+        // Of one-zone galaxies with 25 to 57 nodes over six decades and cut-offs, 92 % have a smaller true
+        // error, 96 % one of more than a tenth of this (tests/app/numerical_error.py).
+        constexpr double coarsening = 5;
         if (sum.full > 0) {
             planes[c].missing_above = sum.above / (sum.full + sum.above + sum.below);
             planes[c].missing_below = sum.below / (sum.full + sum.above + sum.below);
-            planes[c].energy_error = std::abs(sum.half - sum.full) / (coarsening * sum.full);
+            planes[c].energy_error = sum.change / (coarsening * sum.full);
             slow[c] = std::max(0.0, sum.slow / sum.full);
         }
     });

@@ -14,9 +14,10 @@ std::vector<PlaneReport> luminosities(const Emissivity& emissivity);
 /// Fills, for the total plane of each channel, the share missing because the spectra end and the error from
 /// the energy nodes, from the mean spectrum behind each contribution in a sample of the cells.
 ///   missing: the spectrum goes on as the power law through its last (first) two nodes for 4 decades up (down
-///   to 1e-3 of the first node). energy error: difference to the emission from every second node, over
-///   `coarsening`. A cubic basis gains 2^4 from halved nodes where the spectrum is smooth; the smaller
-///   divisor leaves room for spectra that are not.
+///   to 1e-3 of the first node). energy error: largest change under halved nodes, even or odd ones, added up
+///   without sign over the contributions, over `coarsening`. A cubic basis gains 2^4 from halved nodes where
+///   the spectrum is smooth; the smaller divisor leaves room for spectra that are not. Changes that cancel
+///   by chance are rare with two choices of nodes.
 /// Returns the largest share, over the channels, of inverse-Compton emission that comes from electrons below
 /// gamma = 10.
 double check_spectra(std::vector<PlaneReport>& planes,

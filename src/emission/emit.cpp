@@ -143,6 +143,130 @@ template <class Body> void for_each_target(const Cells& cells, std::size_t store
     }
 }
 
+/// What all blocks of a run share.
+struct Run {
+    const Source* electrons = nullptr;
+    const Source* protons = nullptr;
+    ProductPlan plan;
+    Layout layout;
+    ProductSet electron_set, proton_set;
+    SynchrotronCells synchrotron;
+    bool uses_electrons = false, uses_protons = false;
+
+    Scratch scratch() const {
+        Scratch result;
+        result.electron_reader = electrons != nullptr ? electrons->open() : nullptr;
+        result.proton_reader = protons != nullptr ? protons->open() : nullptr;
+        return result;
+    }
+};
+
+Run prepare(const media::Media& media,
+            const std::vector<Source>& sources,
+            const std::vector<Channel>& channels,
+            const Processes& processes,
+            const RunContext& context) {
+    Run run;
+    run.electrons = find(sources, Species::electrons);
+    run.protons = find(sources, Species::protons);
+    run.plan = plan_products(media, processes, run.electrons != nullptr, run.protons != nullptr);
+    const bool wants_synchrotron = processes.synchrotron && run.electrons != nullptr;
+    run.layout = lay_out(channels, processes, run.plan, wants_synchrotron);
+    const auto& gamma = run.layout.gamma;
+    run.electron_set = build_products(run.plan, Species::electrons, run.electrons, channels, gamma, context);
+    run.proton_set = build_products(run.plan, Species::protons, run.protons, channels, gamma, context);
+    if (wants_synchrotron) {
+        run.synchrotron = prepare_synchrotron(*run.electrons->basis, media.field, channels, run.layout.radio,
+                                              run.layout.stokes != 0, context);
+    }
+    run.uses_protons = !run.proton_set.kernels.empty() && !gamma.empty();
+    run.uses_electrons = run.synchrotron.active() || (!run.electron_set.kernels.empty() && !gamma.empty());
+    return run;
+}
+
+/// The planes with the scale of their stored numbers; the weights are brought to it.
+std::vector<Plane> scaled_planes(Run& run) {
+    const Layout& layout = run.layout;
+    std::vector<double> gamma_unit;
+    for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
+        gamma_unit.push_back(std::max({run.electron_set.largest[g], run.proton_set.largest[g], 1e-300}) *
+                             1e-16);
+    }
+    pack(run.electron_set, gamma_unit);
+    pack(run.proton_set, gamma_unit);
+    auto planes = layout.planes;
+    for (Plane& plane : planes) {
+        for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
+            plane.unit = plane.channel == layout.gamma[g] ? gamma_unit[g] : plane.unit;
+        }
+        for (std::size_t r = 0; r < layout.radio.size() && run.synchrotron.active(); ++r) {
+            plane.unit = plane.channel == layout.radio[r] ? run.synchrotron.unit[r] : plane.unit;
+        }
+    }
+    return planes;
+}
+
+/// The gamma planes of one cell of the block; radio planes stay 0.
+void add_products(const Run& run, std::size_t stored_cell, std::size_t in_block, Scratch& scratch) {
+    const Layout& layout = run.layout;
+    for (std::size_t t = 0; t < run.plan.terms.size() && !layout.gamma.empty(); ++t) {
+        const ProductTerm& term = run.plan.terms[t];
+        const bool is_proton = run.plan.kernels[term.kernel].species == Species::protons;
+        const ProductSet& set = is_proton ? run.proton_set : run.electron_set;
+        const SpeciesBlock& species = is_proton ? scratch.protons : scratch.electrons;
+        const float scalar = term.scalar(stored_cell);
+        const float* sums = species.sums.data() + in_block * set.rows + set.first_row(term.kernel);
+        for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
+            const float value = std::max(0.0F, scalar * sums[g]);
+            scratch.row[layout.gamma[g]] += value;
+            if (!layout.term_start.empty()) {
+                scratch.row[layout.term_start[t] + g] += value;
+            }
+        }
+    }
+}
+
+/// Fills the cells that stored cells first .. first + count - 1 stand for. Returns how many spectra fell back
+/// to straight lines.
+std::size_t emit_block(const Run& run,
+                       const media::Media& media,
+                       const Orientation& orientation,
+                       std::size_t first,
+                       std::size_t count,
+                       bool portable,
+                       Scratch& scratch,
+                       Emissivity& field) {
+    std::size_t fallback_cells = 0;
+    if (run.uses_protons) {
+        scratch.protons.read(*run.protons, scratch.proton_reader, run.proton_set, first, count, portable);
+        fallback_cells += scratch.protons.cells_with_fallback();
+    }
+    if (run.uses_electrons) {
+        scratch.electrons.read(*run.electrons, scratch.electron_reader, run.electron_set, first, count,
+                               portable);
+        fallback_cells += scratch.electrons.cells_with_fallback();
+    }
+    const std::size_t planes = field.planes.size();
+    const std::size_t stokes = run.layout.stokes;
+    for (std::size_t c = 0; c < count; ++c) {
+        scratch.row.assign(planes, 0.0F);
+        add_products(run, first + c, c, scratch);
+        for_each_target(field.cells, first + c,
+                        [&](std::size_t cell, std::size_t i, std::size_t j, std::size_t k) {
+                            float* out = field.value.data() + cell * planes;
+                            std::copy(scratch.row.begin(), scratch.row.end(), out);
+                            if (run.synchrotron.active()) {
+                                run.synchrotron.emit(
+                                    field_seen(media.field, field.cells, first + c, i, j, k, orientation),
+                                    scratch.electrons.spectra.data() + c * run.electron_set.stride,
+                                    *run.electrons->basis, scratch.electrons.negative_of(c), run.layout.radio,
+                                    out, stokes == 0 ? nullptr : out + stokes, portable);
+                            }
+                        });
+    }
+    return fallback_cells;
+}
+
 } // namespace
 
 Emitted emit(const grid::Grid& grid,
@@ -152,120 +276,41 @@ Emitted emit(const grid::Grid& grid,
              const Processes& processes,
              const Orientation& orientation,
              const RunContext& context) {
-    const Source* electrons = find(sources, Species::electrons);
-    const Source* protons = find(sources, Species::protons);
-    const ProductPlan plan = plan_products(media, processes, electrons != nullptr, protons != nullptr);
-    const bool wants_synchrotron = processes.synchrotron && electrons != nullptr;
-    const Layout layout = lay_out(channels, processes, plan, wants_synchrotron);
-
-    auto electron_set = build_products(plan, Species::electrons, electrons, channels, layout.gamma, context);
-    auto proton_set = build_products(plan, Species::protons, protons, channels, layout.gamma, context);
-    SynchrotronCells synchrotron;
-    if (wants_synchrotron) {
-        synchrotron = prepare_synchrotron(*electrons->basis, media.field, channels, layout.radio,
-                                          layout.stokes != 0, context);
-    }
-
+    Run run = prepare(media, sources, channels, processes, context);
     Emitted result;
     Emissivity& field = result.emissivity;
-    field.cells = grid::whole_galaxy(
-        grid, synchrotron.active() && !media.field.ordered.empty() ? processes.sectors : 1);
-    field.planes = layout.planes;
-    std::vector<double> gamma_unit;
-    for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
-        gamma_unit.push_back(std::max({electron_set.largest[g], proton_set.largest[g], 1e-300}) * 1e-16);
-    }
-    for (Plane& plane : field.planes) {
-        for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
-            plane.unit = plane.channel == layout.gamma[g] ? gamma_unit[g] : plane.unit;
-        }
-        for (std::size_t r = 0; r < layout.radio.size() && synchrotron.active(); ++r) {
-            plane.unit = plane.channel == layout.radio[r] ? synchrotron.unit[r] : plane.unit;
-        }
-    }
-    pack(electron_set, gamma_unit);
-    pack(proton_set, gamma_unit);
-
-    const std::size_t planes = field.planes.size();
-    const std::size_t gammas = layout.gamma.size();
-    field.value.assign(field.cells.size() * planes, 0.0F);
+    const bool turns_with_azimuth = run.synchrotron.active() && !media.field.ordered.empty();
+    field.cells = grid::whole_galaxy(grid, turns_with_azimuth ? processes.sectors : 1);
+    field.planes = scaled_planes(run);
+    field.value.assign(field.cells.size() * field.planes.size(), 0.0F);
 
     constexpr std::size_t block_cells = 240;
     const std::size_t stored = grid.stored_cells();
     const std::size_t blocks = (stored + block_cells - 1) / block_cells;
     std::vector<std::size_t> fallback_cells(blocks, 0);
-    Pool<Scratch> scratch_pool([&] {
-        Scratch scratch;
-        scratch.electron_reader = electrons != nullptr ? electrons->open() : nullptr;
-        scratch.proton_reader = protons != nullptr ? protons->open() : nullptr;
-        return scratch;
-    });
+    Pool<Scratch> scratch_pool([&] { return run.scratch(); });
     Progress progress(context, "emission", blocks);
-    const bool uses_protons = protons != nullptr && !proton_set.kernels.empty() && gammas > 0;
-    const bool uses_electrons =
-        electrons != nullptr && (synchrotron.active() || (!electron_set.kernels.empty() && gammas > 0));
-
-    const auto work = [&](std::size_t block, Scratch& scratch) {
-        const std::size_t first = block * block_cells;
-        const std::size_t count = std::min(block_cells, stored - first);
-        if (uses_protons) {
-            scratch.protons.read(*protons, scratch.proton_reader, proton_set, first, count,
-                                 context.reproducible);
-            fallback_cells[block] += scratch.protons.cells_with_fallback();
-        }
-        if (uses_electrons) {
-            scratch.electrons.read(*electrons, scratch.electron_reader, electron_set, first, count,
-                                   context.reproducible);
-            fallback_cells[block] += scratch.electrons.cells_with_fallback();
-        }
-        scratch.row.assign(planes, 0.0F);
-        for (std::size_t c = 0; c < count; ++c) {
-            std::fill(scratch.row.begin(), scratch.row.end(), 0.0F);
-            for (std::size_t t = 0; t < plan.terms.size() && gammas > 0; ++t) {
-                const ProductTerm& term = plan.terms[t];
-                const bool is_proton = plan.kernels[term.kernel].species == Species::protons;
-                const ProductSet& set = is_proton ? proton_set : electron_set;
-                const SpeciesBlock& species = is_proton ? scratch.protons : scratch.electrons;
-                const float scalar = term.scalar(first + c);
-                const float* sums = species.sums.data() + c * set.rows + set.first_row(term.kernel);
-                for (std::size_t g = 0; g < gammas; ++g) {
-                    const float value = std::max(0.0F, scalar * sums[g]);
-                    scratch.row[layout.gamma[g]] += value;
-                    if (!layout.term_start.empty()) {
-                        scratch.row[layout.term_start[t] + g] += value;
-                    }
-                }
-            }
-            for_each_target(
-                field.cells, first + c, [&](std::size_t cell, std::size_t i, std::size_t j, std::size_t k) {
-                    float* out = field.value.data() + cell * planes;
-                    std::copy(scratch.row.begin(), scratch.row.end(), out);
-                    if (synchrotron.active()) {
-                        synchrotron.emit(
-                            field_seen(media.field, field.cells, first + c, i, j, k, orientation),
-                            scratch.electrons.spectra.data() + c * electron_set.stride, *electrons->basis,
-                            scratch.electrons.negative_of(c), layout.radio, out,
-                            layout.stokes == 0 ? nullptr : out + layout.stokes, context.reproducible);
-                    }
-                });
-        }
-        progress.step();
-    };
     for_each_block(context, blocks, [&](std::size_t block) {
-        scratch_pool.with([&](Scratch& scratch) { work(block, scratch); });
+        const std::size_t first = block * block_cells;
+        scratch_pool.with([&](Scratch& scratch) {
+            fallback_cells[block] =
+                emit_block(run, media, orientation, first, std::min(block_cells, stored - first),
+                           context.reproducible, scratch, field);
+        });
+        progress.step();
     });
-    if (uses_electrons && electrons->finish) {
-        electrons->finish();
+    if (run.uses_electrons && run.electrons->finish) {
+        run.electrons->finish();
     }
-    if (uses_protons && protons->finish) {
-        protons->finish();
+    if (run.uses_protons && run.protons->finish) {
+        run.protons->finish();
     }
     for (const std::size_t n : fallback_cells) {
         result.report.cells_with_fallback += n;
     }
     result.report.planes = luminosities(field);
-    result.report.share_below_gamma_10 = check_spectra(result.report.planes, grid, media, plan, sources,
-                                                       channels, synchrotron.active(), context);
+    result.report.share_below_gamma_10 = check_spectra(result.report.planes, grid, media, run.plan, sources,
+                                                       channels, run.synchrotron.active(), context);
     return result;
 }
 

@@ -186,10 +186,9 @@ plan_products(const media::Media& media, const Processes& processes, bool electr
     return plan;
 }
 
-std::function<double(double)> channel_kernel(const ProductKernel& kernel, const Channel& channel) {
+WeightedPoints channel_photons(const Channel& channel) {
     if (!channel.is_band()) {
-        return
-            [value = kernel.value, photon = channel.from](double kinetic) { return value(kinetic, photon); };
+        return {{channel.from}, {1.0}};
     }
     const double from = std::log(channel.from);
     const double to = std::log(channel.to);
@@ -198,25 +197,36 @@ std::function<double(double)> channel_kernel(const ProductKernel& kernel, const 
     for (int i = 0; i <= panels; ++i) {
         edges.push_back(from + (to - from) * i / panels);
     }
-    const auto points = composite_points(gauss_legendre(8), edges);
-    return [value = kernel.value, points](double kinetic) {
-        double sum = 0;
-        for (std::size_t p = 0; p < points.x.size(); ++p) {
-            const double photon = std::exp(points.x[p]);
-            sum += points.w[p] * photon * value(kinetic, photon);
-        }
-        return sum;
-    };
+    auto points = composite_points(gauss_legendre(8), edges);
+    for (std::size_t p = 0; p < points.x.size(); ++p) {
+        points.x[p] = std::exp(points.x[p]);
+        points.w[p] *= points.x[p]; // dE = E d ln E
+    }
+    return points;
 }
 
-std::vector<double> channel_splits(const ProductKernel& kernel, const Channel& channel) {
-    auto splits = kernel.splits(channel.from);
-    if (channel.is_band()) {
-        const auto more = kernel.splits(channel.to);
-        splits.insert(splits.end(), more.begin(), more.end());
+namespace {
+
+WeightRow channel_row(const spectra::Basis& basis, const ProductKernel& kernel, const Channel& channel) {
+    constexpr int points = 6;
+    WeightRow sum{std::vector<double>(basis.nodes(), 0.0), std::vector<double>(4 * basis.intervals(), 0.0)};
+    const auto photons = channel_photons(channel);
+    for (std::size_t p = 0; p < photons.x.size(); ++p) {
+        const double photon = photons.x[p];
+        const auto row = integrate_kernel(
+            basis, [&](double kinetic) { return kernel.value(kinetic, photon); }, kernel.splits(photon),
+            points);
+        for (std::size_t i = 0; i < row.cubic.size(); ++i) {
+            sum.cubic[i] += photons.w[p] * row.cubic[i];
+        }
+        for (std::size_t i = 0; i < row.fallback.size(); ++i) {
+            sum.fallback[i] += photons.w[p] * row.fallback[i];
+        }
     }
-    return splits;
+    return sum;
 }
+
+} // namespace
 
 ProductSet build_products(const ProductPlan& plan,
                           Species species,
@@ -239,11 +249,8 @@ ProductSet build_products(const ProductPlan& plan,
     }
     set.row.resize(set.kernels.size() * set.channels);
     for_each_block(context, set.row.size(), [&](std::size_t r) {
-        const ProductKernel& kernel = plan.kernels[set.kernels[r / set.channels]];
-        const Channel& channel = channels[gamma_channels[r % set.channels]];
-        constexpr int points = 6;
-        set.row[r] = integrate_kernel(*source->basis, channel_kernel(kernel, channel),
-                                      channel_splits(kernel, channel), points);
+        set.row[r] = channel_row(*source->basis, plan.kernels[set.kernels[r / set.channels]],
+                                 channels[gamma_channels[r % set.channels]]);
     });
     for (std::size_t r = 0; r < set.row.size(); ++r) {
         for (const double weight : set.row[r].cubic) {

@@ -1,5 +1,6 @@
 #pragma once
 
+#include "aureole/base/quadrature.hpp"
 #include "aureole/emission/channels.hpp"
 #include "aureole/emission/emit.hpp"
 #include "aureole/emission/weights.hpp"
@@ -64,9 +65,9 @@ ProductSet build_products(const ProductPlan& plan,
 /// Fills `packed` and `fallback`; unit[g] divides the rows of channel g.
 void pack(ProductSet& set, const std::vector<double>& unit);
 
-/// The kernel as a function of the kinetic energy for a channel: at its photon energy, or integrated over its
-/// band.
-std::function<double(double)> channel_kernel(const ProductKernel& kernel, const Channel& channel);
-std::vector<double> channel_splits(const ProductKernel& kernel, const Channel& channel);
+/// Photon energies [erg] whose kernels, times the weights, add up to a channel: its energy alone, or nodes of
+/// a quadrature over its band. Each energy keeps a kernel of its own, since the kernel bends where the
+/// electron's energy is the photon's.
+WeightedPoints channel_photons(const Channel& channel);
 
 } // namespace aureole::emission

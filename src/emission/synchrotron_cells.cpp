@@ -54,6 +54,13 @@ Vec3 centre(const grid::Cells& cells, std::size_t i, std::size_t j, std::size_t 
     return {x, 0.5 * (cells.stored.y[j] + cells.stored.y[j + 1]), z};
 }
 
+/// A vector across `from` after the smallest turn that takes the unit vector `from` to `to`.
+Vec3 turned(const Vec3& v, const Vec3& from, const Vec3& to) {
+    const double share = dot(v, to) / (1 + dot(from, to));
+    return {v[0] - share * (from[0] + to[0]), v[1] - share * (from[1] + to[1]),
+            v[2] - share * (from[2] + to[2])};
+}
+
 /// Range of the field across the line of sight over the whole grid: the random part alone is a lower bound,
 /// all of it an upper one.
 std::array<double, 2> field_range(const media::Field& field) {
@@ -104,6 +111,8 @@ FieldSeen field_seen(const media::Field& field,
     }
     const Vec3 b = ordered_field(field, cells, stored_cell, j, k);
     Vec3 towards = orientation.towards;
+    Vec3 right_axis = orientation.right;
+    Vec3 up_axis = orientation.up;
     if (orientation.observer) {
         const Vec3 at = centre(cells, i, j, k);
         const Vec3& observer = *orientation.observer;
@@ -112,13 +121,15 @@ FieldSeen field_seen(const media::Field& field,
         for (double& component : towards) {
             component /= distance;
         }
+        right_axis = turned(right_axis, orientation.towards, towards);
+        up_axis = turned(up_axis, orientation.towards, towards);
     }
     const double along = dot(b, towards);
     const double b2 = std::max(0.0, dot(b, b) - along * along);
     seen.across = std::sqrt(b2 + random);
     seen.order = seen.across > 0 ? b2 / (b2 + random) : 0;
-    const double right = dot(b, orientation.right);
-    const double up = dot(b, orientation.up);
+    const double right = dot(b, right_axis);
+    const double up = dot(b, up_axis);
     const double norm = right * right + up * up;
     if (norm > 0) {
         // Twice the position angle of B is twice that of `right` plus twice the angle from `right`; E is

@@ -1,5 +1,7 @@
 #include "aureole/emission/synchrotron_rows.hpp"
 
+#include "synchrotron_kernel.hpp"
+
 #include "aureole/base/constants.hpp"
 #include "aureole/base/parallel.hpp"
 #include "aureole/base/quadrature.hpp"
@@ -12,50 +14,6 @@
 namespace aureole::emission {
 
 namespace {
-
-/// Rice averages <b F(x/b)> and <b G(x/b) cos 2 phi> at one order, tabulated evenly in ln x. Below the table
-/// both rise as x^(1/3); above it they are zero.
-struct KernelTable {
-    static constexpr double first = -16, step = 0.1;
-    std::vector<double> log_total, ratio; // ln f, g/f
-
-    std::array<double, 2> at(double log_x) const {
-        if (log_x < first + step) {
-            const double f = std::exp(log_total.front() + (log_x - first) / 3);
-            return {f, f * ratio.front()};
-        }
-        const double place = (log_x - first) / step;
-        const auto cell = static_cast<std::size_t>(place);
-        if (cell + 2 >= log_total.size()) {
-            return {0, 0};
-        }
-        const double t = place - static_cast<double>(cell);
-        const double w0 = -t * (t - 1) * (t - 2) / 6;
-        const double w1 = (t + 1) * (t - 1) * (t - 2) / 2;
-        const double w2 = -(t + 1) * t * (t - 2) / 2;
-        const double w3 = (t + 1) * t * (t - 1) / 6;
-        const auto blend = [&](const std::vector<double>& v) {
-            return w0 * v[cell - 1] + w1 * v[cell] + w2 * v[cell + 1] + w3 * v[cell + 2];
-        };
-        const double f = std::exp(blend(log_total));
-        return {f, f * blend(ratio)};
-    }
-};
-
-constexpr double largest_x = 700; // F(700) is below the smallest double
-
-KernelTable kernel_table(double order) {
-    KernelTable table;
-    for (double log_x = KernelTable::first; log_x < std::log(largest_x); log_x += KernelTable::step) {
-        const auto pair = physics::mixed_field(std::exp(log_x), order);
-        if (!(pair.total > 0)) {
-            break;
-        }
-        table.log_total.push_back(std::log(pair.total));
-        table.ratio.push_back(pair.polarised / pair.total);
-    }
-    return table;
-}
 
 /// Orders of the table: close together near 1, where the tail of the kernel changes fastest.
 std::vector<double> table_orders() {
@@ -82,7 +40,7 @@ SynchrotronRows synchrotron_rows(
     rows.order = table_orders();
     const auto lorentz = [](double kinetic) { return 1 + kinetic / constants::electron_rest_energy; };
     const double log_gamma2_last = 2 * std::log(lorentz(basis.energy().back()));
-    rows.beyond = std::log(largest_x) + log_gamma2_last;
+    rows.beyond = std::log(KernelTable::largest_x) + log_gamma2_last;
     rows.first = rows.step * std::floor(from / rows.step - 1);
     const double last = std::min(to, rows.beyond);
     rows.tables = static_cast<std::size_t>(std::max(2.0, std::ceil((last - rows.first) / rows.step) + 2));

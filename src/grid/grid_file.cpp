@@ -410,6 +410,9 @@ class HeaderCheck {
         if (file_.has("CR_LEPTON") && (file_.has("CR_ELECTRON") || file_.has("CR_POSITRON"))) {
             problem("CR_LEPTON", "found beside CR_ELECTRON or CR_POSITRON, expected one or the other");
         }
+        if (file_.has("CR_ENERGY_LEPTON") && file_.has("CR_ENERGY_ELECTRON")) {
+            problem("CR_ENERGY_LEPTON", "found beside CR_ENERGY_ELECTRON, expected one or the other");
+        }
         if (!without_checksum_.empty()) {
             file_.warnings.push_back(fmt::format("{}: no checksum (DATASUM) in HDU {}", file_.path,
                                                  fmt::join(without_checksum_, ", ")));

@@ -226,6 +226,7 @@ void write_gamma_cube(const std::filesystem::path& path,
     append(header.cards, beam_cards(planes.front()));
     append(header.cards, origin_cards(origin));
     append(header.cards, {{"PROCESS", notes.front().process, ""}});
+    append(header.cards, notes.front().more);
     header.history = origin.history;
 
     const std::size_t pixels = planes.front().value.size();

@@ -278,9 +278,43 @@ std::vector<double> cell_averages(const ProfileSpec& profile,
     return result;
 }
 
+std::optional<AverageFactors> average_factors(const ProfileSpec& profile, const Grid& grid) {
+    const bool separable = profile.kind == ProfileKind::double_exponential ||
+                           profile.kind == ProfileKind::sech2 || profile.kind == ProfileKind::gaussian;
+    if (!separable || profile.flare > 0) {
+        return std::nullopt;
+    }
+    const bool rz = grid.geometry == Geometry::rz;
+    const Scales scales = scales_of(profile);
+    AverageFactors factors;
+    const auto radial = [&](double x, double y, double) {
+        return profile_shape(profile, std::hypot(x, y), 0);
+    };
+    for (std::size_t j = 0; j < grid.ny(); ++j) {
+        const auto ys = rz ? one_sample : axis_samples(grid.y[j], grid.y[j + 1], 0.5 * scales.radial);
+        for (std::size_t i = 0; i < grid.nx(); ++i) {
+            const auto xs = axis_samples(grid.x[i], grid.x[i + 1], 0.5 * scales.radial);
+            factors.across.push_back(profile.value * average(radial, grid.geometry, xs, ys, one_sample));
+        }
+    }
+    const auto vertical = [&](double, double, double z) { return profile_shape(profile, 0, z); };
+    for (std::size_t k = 0; k < grid.nz(); ++k) {
+        const auto zs = axis_samples(grid.z[k], grid.z[k + 1], 0.5 * scales.vertical);
+        factors.along.push_back(average(vertical, Geometry::xyz, one_sample, one_sample, zs));
+    }
+    return factors;
+}
+
 std::vector<float>
 cell_averages(const ProfileSpec& profile, const Grid& grid, bool allow_negative, const RunContext& context) {
     std::vector<float> result(grid.stored_cells());
+    if (const auto factors = average_factors(profile, grid)) {
+        for (std::size_t cell = 0; cell < result.size(); ++cell) {
+            result[cell] = static_cast<float>(factors->across[cell % grid.plane_cells()] *
+                                              factors->along[cell / grid.plane_cells()]);
+        }
+        return result;
+    }
     for_each_block(context, grid.nz(), [&](std::size_t plane) {
         const auto values = cell_averages(profile, grid, plane, plane + 1, allow_negative);
         std::transform(values.begin(), values.end(),

@@ -60,15 +60,17 @@ private:
 
 Media coarsened(const Media& media, const grid::Grid& fine) {
     const Averager average(fine);
-    Media coarse = media;
+    Media coarse;
+    coarse.field.parity = media.field.parity;
     coarse.field.ordered = average.vector(media.field.ordered);
     coarse.field.random_rms = average.scalar(media.field.random_rms);
     for (auto member : {&Gas::hi, &Gas::h2, &Gas::hii, &Gas::electrons, &Gas::temperature}) {
         coarse.gas.*member = average.scalar(media.gas.*member);
     }
-    for (Radiation& field : coarse.radiation) {
-        field.energy_density = average.scalar(field.energy_density);
-        field.photon_density = average.scalar(field.photon_density, field.photon_energy.size());
+    for (const Radiation& field : media.radiation) {
+        coarse.radiation.push_back({field.name, field.temperature, field.uniform_density,
+                                    average.scalar(field.energy_density), field.photon_energy,
+                                    average.scalar(field.photon_density, field.photon_energy.size())});
     }
     coarse.turbulent_speed = average.scalar(media.turbulent_speed);
     coarse.turbulent_scale = average.scalar(media.turbulent_scale);

@@ -7,6 +7,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <iterator>
 #include <limits>
 
 namespace aureole::report {
@@ -207,26 +208,27 @@ model_text(const std::string& model, bool forward, const std::string& side, long
     return text;
 }
 
-std::vector<std::string> height_lines(const std::vector<Line>& lines, bool any_chosen, bool each_strip) {
-    bool strips = false;
-    bool several = false;
-    for (const Line& line : lines) {
-        strips = strips || line.strip >= 0;
-        several = several || line.component > 0;
-    }
+/// The lines that the terminal shows: of the chosen model where there is one, and of single strips only on
+/// demand.
+std::vector<Line> lines_to_print(const std::vector<Line>& lines, bool any_chosen, bool each_strip) {
+    std::vector<Line> printed;
+    std::copy_if(lines.begin(), lines.end(), std::back_inserter(printed), [&](const Line& line) {
+        return (!any_chosen || line.chosen) && (line.strip < 0 || each_strip);
+    });
+    return printed;
+}
+
+std::vector<std::string> height_lines(const std::vector<Line>& lines, bool with_strips, bool several) {
     std::vector<std::vector<std::string>> rows{{"map"}};
-    if (strips) {
+    if (with_strips) {
         rows.front().push_back("strip");
     }
     for (const char* name : {"model", "h/kpc (noise)", "scatter", "numerical", "chi2/dof", "status"}) {
         rows.front().emplace_back(name);
     }
     for (const Line& line : lines) {
-        if ((any_chosen && !line.chosen) || (line.strip >= 0 && !each_strip)) {
-            continue;
-        }
         std::vector<std::string> row{line.map};
-        if (strips) {
+        if (with_strips) {
             row.push_back(strip_text(line.strip));
         }
         row.push_back(model_text(line.model, line.forward, line.side, line.component, several));
@@ -407,10 +409,10 @@ Json exponent_json(const HeightsReport& report) {
 
 std::vector<std::string>
 terminal_lines(const HeightsReport& report, std::span<const std::string> labels, bool each_strip) {
-    const std::vector<Line> table = lines_of(report, labels);
-    std::vector<std::string> lines = height_lines(table, report.chosen.has_value(), each_strip);
+    const auto printed = lines_to_print(lines_of(report, labels), report.chosen.has_value(), each_strip);
     const bool several =
-        std::any_of(table.begin(), table.end(), [](const Line& line) { return line.component > 0; });
+        std::any_of(printed.begin(), printed.end(), [](const Line& line) { return line.component > 0; });
+    std::vector<std::string> lines = height_lines(printed, has_strips(report), several);
     for (const HeightExponent& exponent : report.exponents) {
         lines.push_back(exponent_line(exponent, several));
     }

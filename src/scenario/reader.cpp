@@ -244,6 +244,14 @@ struct Reader {
                     "found \"Jy/beam\" without a beam, expected radio.beam_major such as \"10 arcsec\", "
                     "or another unit");
         }
+        if (maps > 0 && sound({"radio.bandwidth"}) &&
+            !(scenario.quantity("radio.bandwidth") < 2 * scenario.quantities("radio.frequencies").front())) {
+            problem("radio.bandwidth",
+                    fmt::format("found {}, expected less than twice the lowest frequency, {}",
+                                format_quantity(scenario.quantity("radio.bandwidth"), dimension::frequency),
+                                format_quantity(scenario.quantities("radio.frequencies").front(),
+                                                dimension::frequency)));
+        }
         if (scenario.quantity("radio.beam_minor") > major) {
             problem("radio.beam_minor", "found more than radio.beam_major, expected at most that");
         }

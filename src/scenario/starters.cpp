@@ -127,7 +127,7 @@ strip_width = "3 kpc"
 from = "0 kpc"
 to = "8 kpc"
 models = ["exponential", "gaussian", "two_exponential"]
-rms = ["60 uJy/beam", "30 uJy/beam", "15 uJy/beam", "8 uJy/beam", "5 uJy/beam", "4 uJy/beam"]
+rms = ["300 uJy/beam", "150 uJy/beam", "60 uJy/beam", "30 uJy/beam", "20 uJy/beam", "12 uJy/beam"]
 )toml";
 
 constexpr std::string_view dwarf_wind =

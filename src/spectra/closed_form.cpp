@@ -10,6 +10,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <optional>
 
 namespace aureole::spectra {
 
@@ -54,14 +55,24 @@ Source with_changing_height(const ProfileSpec& space,
                             const RunContext& context) {
     const std::size_t nodes = basis->nodes();
     const auto values = std::make_shared<std::vector<float>>(grid.stored_cells() * nodes);
+    const auto profile_at = [&](std::size_t node) {
+        ProfileSpec profile = space;
+        profile.height *= std::pow(basis->energy()[node] / reference, height_slope);
+        return profile;
+    };
+    std::vector<std::optional<media::AverageFactors>> factors(nodes);
+    for_each_block(context, nodes,
+                   [&](std::size_t i) { factors[i] = media::average_factors(profile_at(i), grid); });
     for_each_block(context, grid.nz(), [&](std::size_t plane) {
+        const std::size_t cells = grid.plane_cells();
         for (std::size_t i = 0; i < nodes; ++i) {
-            ProfileSpec profile = space;
-            profile.height *= std::pow(basis->energy()[i] / reference, height_slope);
-            const auto average = media::cell_averages(profile, grid, plane, plane + 1, false);
-            for (std::size_t c = 0; c < average.size(); ++c) {
-                (*values)[(plane * grid.plane_cells() + c) * nodes + i] =
-                    static_cast<float>(average[c] * weighted_shape[i]);
+            float* out = values->data() + plane * cells * nodes + i;
+            const auto average = factors[i]
+                                     ? factors[i]->across
+                                     : media::cell_averages(profile_at(i), grid, plane, plane + 1, false);
+            const double scale = weighted_shape[i] * (factors[i] ? factors[i]->along[plane] : 1.0);
+            for (std::size_t c = 0; c < cells; ++c) {
+                out[c * nodes] = static_cast<float>(average[c] * scale);
             }
         }
     });

@@ -246,7 +246,10 @@ std::vector<Source> open_sources(const scenario::Scenario& scenario,
         } else if (kind == "closed_form") {
             sources.push_back(closed_form(scenario, grid, species, context));
         } else {
-            const std::string hdu = species == Species::electrons ? "CR_ENERGY_ELECTRON" : "CR_ENERGY_PROTON";
+            std::string hdu = species == Species::electrons ? "CR_ENERGY_ELECTRON" : "CR_ENERGY_PROTON";
+            if (species == Species::electrons && file != nullptr && file->has("CR_ENERGY_LEPTON")) {
+                hdu = "CR_ENERGY_LEPTON";
+            }
             const auto profile = scenario.profile(key + ".energy_density");
             std::vector<float> density;
             if (file != nullptr && file->has(hdu) && !scenario.is_set(key + ".energy_density.profile")) {

@@ -136,6 +136,17 @@ TEST_CASE("JSON and terminal show the chosen model only", "[report]") {
     CHECK(lines[4] == "A note.");
 }
 
+TEST_CASE("components are numbered only where the lines shown have more than one", "[report]") {
+    HeightsReport report = sample();
+    report.rows[1].fit.model = profiles::Model::two_exponential;
+    report.rows[1].fit.component.resize(2);
+    for (const auto& line : terminal_lines(report, labels)) {
+        CHECK_THAT(line, !Contains("#1"));
+    }
+    report.chosen.reset(); // all models are shown
+    CHECK_THAT(terminal_lines(report, labels)[2], Contains("#1"));
+}
+
 TEST_CASE("tables without a label for every map are refused", "[report]") {
     CHECK_THROWS_AS(heights_table(sample(), std::vector<std::string>{"150 MHz"}), Error);
 }

@@ -294,6 +294,11 @@ TEST_CASE("the scenario says where spectra come from", "[spectra][scenario]") {
     CHECK(names("", nullptr) == Names{"electrons", "protons"});
     CHECK(names("electrons.source = 'none'", nullptr) == Names{"protons"});
     CHECK(names("electrons.source = 'none'\nprotons.source = 'energy_density'", &file) == Names{"protons"});
+    sample.add(sample_data("CR_ENERGY_LEPTON", {3, 5}, "eV cm-3", "R,Z", [](std::size_t) { return 1; }));
+    sample.write(folder().file("leptons.fits"));
+    const auto leptons = grid::open_grid_file(folder().file("leptons.fits"));
+    CHECK(names("electrons.source = 'energy_density'", &leptons) == Names{"electrons"});
+    CHECK_THROWS_WITH(names("electrons.source = 'energy_density'", &file), Contains("CR_ENERGY_ELECTRON"));
     CHECK_THROWS_WITH(names("electrons.source = 'file'", nullptr), Contains("electrons.source"));
     CHECK_THROWS_WITH(names("protons.source = 'file'", &file), Contains("CR_PROTON"));
 }

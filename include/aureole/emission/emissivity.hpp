@@ -15,7 +15,7 @@ struct Plane {
     Band band = Band::radio;
     std::string process;     ///< "total", "synchrotron", "synchrotron_q", "inverse_compton:cmb",
                              ///< "bremsstrahlung:hi", "pion_decay", ...
-    std::size_t channel = 0; ///< index into the band's channels
+    std::size_t channel = 0; ///< index into the channels of both bands
     bool is_signed = false;  ///< Stokes Q, U
     /// CGS size of one stored unit: erg s-1 cm-3 Hz-1 sr-1 for radio; s-1 cm-3 sr-1 erg-1 (or, for a channel
     /// that is a band, s-1 cm-3 sr-1) for gamma. Emissivities of haloes are far below the smallest normal

@@ -24,7 +24,7 @@ struct Orientation {
     /// East.
     double cos_double_angle = 1, sin_double_angle = 0;
     std::optional<std::array<double, 3>>
-        observer; ///< cm; where set, `towards` is taken from each cell to here
+        observer; ///< cm; where set, `towards` is taken from each cell to here, `right` and `up` turn with it
 };
 
 /// What is emitted and how it is kept.
@@ -56,7 +56,6 @@ struct EmissionReport {
     std::size_t cells_with_fallback = 0; ///< spectra that use the straight line somewhere
     double share_below_gamma_10 =
         0; ///< largest share, over the channels, of inverse-Compton emission from electrons of gamma < 10
-    std::vector<std::string> warnings;
 };
 
 struct Emitted {
