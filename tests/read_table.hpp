@@ -8,8 +8,8 @@
 #include <string>
 #include <vector>
 
-/// Rows of a CSV table below tests/data, by column name. Lines starting with '#' are comments; a missing file, an empty table or a ragged
-/// row fails the test that asks.
+/// Rows of a CSV table below tests/data, by column name. Lines starting with '#' are comments; a missing
+/// file, an empty table or a ragged row fails the test that asks.
 inline std::vector<std::map<std::string, std::string>> read_table(const std::string& name) {
     const std::string path = std::string(AUREOLE_TEST_DATA) + "/" + name;
     std::ifstream file(path);

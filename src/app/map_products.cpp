@@ -76,7 +76,8 @@ MapSettings map_settings(const scenario::Scenario& scenario, const grid::Grid& g
     // Steps at the borders of the published regimes, or coefficients that nothing outside has confirmed.
     const bool unverified = pion_model != "kafexhiu_2014_continuous" && pion_model != "kelner_2006";
     settings.gamma_cards = {{"PIONMOD", pion_model, "p + p -> gamma, by author and year"},
-                            {"PIONVER", std::string(unverified ? "UNVERIFIED" : "CHECKED"), "energy fraction across regime borders"},
+                            {"PIONVER", std::string(unverified ? "UNVERIFIED" : "CHECKED"),
+                             "energy fraction across regime borders"},
                             {"NUCENH", scenario.number("emission.nuclear_enhancement"), "nuclei over p + p"}};
     return settings;
 }
@@ -131,6 +132,7 @@ std::vector<MapProduct> make_maps(const emission::Emitted& emitted,
             notes.flux_outside = planes[p].is_signed ? 0 : rendered.flux_outside[p] / expected;
         }
         notes.error_sight = rendered.sampling_error[p];
+        notes.width = radio ? product.channel.to - product.channel.from : 0;
         if (!radio) {
             notes.more = settings.gamma_cards;
         }

@@ -51,6 +51,14 @@ Inputs read_inputs(const scenario::Scenario& scenario) {
                 "{}: found no channels, expected radio.frequencies, gamma.energies or gamma.band_edges",
                 scenario.file().string()));
     }
+    for (std::size_t c = 1; c < inputs.channels.size(); ++c) {
+        if (file_label(inputs.channels[c]) == file_label(inputs.channels[c - 1])) {
+            throw Error(
+                ErrorKind::scenario,
+                fmt::format("{}: found two channels at {}, expected channels that differ in four digits",
+                            scenario.file().string(), emission::label(inputs.channels[c])));
+        }
+    }
     inputs.processes = emission::processes(scenario);
     inputs.settings = map_settings(scenario, inputs.grid);
     return inputs;

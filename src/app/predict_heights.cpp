@@ -125,13 +125,13 @@ std::optional<BandHeights> measure_band(Band band,
     if (images.empty()) {
         return std::nullopt;
     }
+    profiles::HeightsSpec& spec = result.spec;
+    spec = heights_spec(scenario, settings, images.front());
+    const auto given = band == Band::radio ? scenario.texts("heights.rms") : std::vector<std::string>{};
+    for (std::size_t i = 0; i < images.size(); ++i) {
+        spec.rms.push_back(rms_of(given, i, images[i]));
+    }
     try {
-        profiles::HeightsSpec& spec = result.spec;
-        spec = heights_spec(scenario, settings, images.front());
-        const auto given = band == Band::radio ? scenario.texts("heights.rms") : std::vector<std::string>{};
-        for (std::size_t i = 0; i < images.size(); ++i) {
-            spec.rms.push_back(rms_of(given, i, images[i]));
-        }
         result.report = profiles::measure_heights(images, spec, context);
         if (!coarse_images.empty()) {
             add_numerical_errors(result.report,
@@ -141,7 +141,8 @@ std::optional<BandHeights> measure_band(Band band,
             result.report.exponents.clear(); // heights against frequency are a matter of the radio maps
         }
     } catch (const Error& error) {
-        if (error.kind() != ErrorKind::input) {
+        // Maps that cannot be measured (too coarse, empty) are still maps.
+        if (error.kind() != ErrorKind::input && error.kind() != ErrorKind::scenario) {
             throw;
         }
         result.problem = error.what();

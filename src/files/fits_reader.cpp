@@ -86,8 +86,7 @@ void check_place(const std::string& path) {
         throw Error(ErrorKind::input, fmt::format("{}: found a folder, expected a FITS file", path));
     }
     if (!std::filesystem::is_regular_file(kind)) {
-        throw Error(ErrorKind::input,
-                    fmt::format("{}: found a device or pipe, expected a FITS file", path));
+        throw Error(ErrorKind::input, fmt::format("{}: found a device or pipe, expected a FITS file", path));
     }
 }
 
@@ -130,7 +129,8 @@ std::string text_or(fitsfile* file, const char* keyword, const char* otherwise, 
     return value;
 }
 
-/// Quantised floats carry scale columns or keywords, and HCOMPRESS may round; other tile compression is exact.
+/// Quantised floats carry scale columns or keywords, and HCOMPRESS may round; other tile compression is
+/// exact.
 bool is_lossy(fitsfile* file, int bitpix, int* status) {
     if (bitpix < 0) {
         if (text_or(file, "ZQUANTIZ", "", status) == "NONE") {
@@ -201,11 +201,12 @@ FitsReader::FitsReader(const std::string& path) : path_(path), handle_(std::make
             break;
         }
         if (status != 0) {
-            throw Error(ErrorKind::input,
-                        fmt::format("{}: HDU number {}: header cut short or damaged, found {} bytes from its start "
-                                    "at byte {}: {} (status {})",
-                                    path, n, file_bytes > end ? file_bytes - end : 0, end, cfitsio_text(status),
-                                    status));
+            throw Error(
+                ErrorKind::input,
+                fmt::format("{}: HDU number {}: header cut short or damaged, found {} bytes from its start "
+                            "at byte {}: {} (status {})",
+                            path, n, file_bytes > end ? file_bytes - end : 0, end, cfitsio_text(status),
+                            status));
         }
         hdus_.push_back(describe_current(n, packed));
         LONGLONG header = 0;
@@ -215,9 +216,10 @@ FitsReader::FitsReader(const std::string& path) : path_(path), handle_(std::make
         check(status, place_of(hdus_.back()));
         end = static_cast<std::size_t>(stop);
         if (!packed && end > file_bytes) {
-            throw Error(ErrorKind::input,
-                        fmt::format("{}: {}: cut short: found {} bytes in the file, expected {} by its header",
-                                    path, place_of(hdus_.back()), file_bytes, end));
+            throw Error(
+                ErrorKind::input,
+                fmt::format("{}: {}: cut short: found {} bytes in the file, expected {} by its header", path,
+                            place_of(hdus_.back()), file_bytes, end));
         }
     }
     fits_clear_errmsg();

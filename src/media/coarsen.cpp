@@ -8,7 +8,7 @@ namespace {
 
 /// Volume-weighted averages of `per_cell` numbers a cell.
 class Averager {
-public:
+  public:
     explicit Averager(const grid::Grid& fine)
         : coarse_of_(grid::coarse_cell(fine)), volume_(grid::cell_volumes(fine)),
           total_(grid::coarsened(fine).stored_cells(), 0.0) {
@@ -24,7 +24,8 @@ public:
         std::vector<double> sum(total_.size() * per_cell, 0.0);
         for (std::size_t cell = 0; cell < volume_.size(); ++cell) {
             for (std::size_t v = 0; v < per_cell; ++v) {
-                sum[coarse_of_[cell] * per_cell + v] += volume_[cell] * static_cast<double>(values[cell * per_cell + v]);
+                sum[coarse_of_[cell] * per_cell + v] +=
+                    volume_[cell] * static_cast<double>(values[cell * per_cell + v]);
             }
         }
         std::vector<float> result(sum.size());
@@ -51,7 +52,7 @@ public:
         return result;
     }
 
-private:
+  private:
     std::vector<std::size_t> coarse_of_;
     std::vector<double> volume_, total_;
 };

@@ -52,8 +52,8 @@ struct Loader {
 };
 
 /// Unit vector of the ordered field at a point, components as the grid stores them (x, y, z or R, phi, z).
-/// Below the plane the vertical part of an X-shaped field turns, so that it points away from the plane on both
-/// sides.
+/// Below the plane the vertical part of an X-shaped field turns, so that it points away from the plane on
+/// both sides.
 std::array<double, 3> direction(const std::string& kind,
                                 double pitch,
                                 double tilt,

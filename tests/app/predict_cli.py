@@ -181,6 +181,7 @@ class Predict(unittest.TestCase):
         self.fails(3, "assignment", scenario=SCENARIO.replace('[gas.hi]\nprofile = "double_exponential"', '[gas.hi]\nprofile = "formula"\nformula = "z=5"'))
         self.fails(3, "beyond the grid", scenario=SCENARIO.replace('"10 Mpc"', '"5 kpc"\nprojection = "perspective"'))
         self.fails(3, "no channels", scenario=SCENARIO.replace('["150 MHz", "1.4 GHz"]', "[]").replace('["1 GeV"]', "[]"))
+        self.fails(3, "radio.bandwidth", "twice the lowest frequency", scenario=SCENARIO.replace('beam_major', 'bandwidth = "300 MHz"\nbeam_major'))
         self.fails(4, "nowhere.toml", arguments=["predict", self.folder / "nowhere.toml", "-o", self.out])
         self.fails(4, "folder", arguments=["predict", self.folder, "-o", self.out])
 
@@ -241,6 +242,7 @@ class Predict(unittest.TestCase):
         self.fails(2, "-o", arguments=["predict", self.scenario])
         self.fails(2, "--memory", arguments=["predict", self.scenario, "-o", self.out, "--memory", "lots"])
         self.fails(2, arguments=["scenario", "no_such_name"])
+        self.fails(2, "--memory", arguments=["predict", self.scenario, "-o", self.out, "--memory", "1e30"])
         self.fails(1, "--memory", arguments=["predict", self.scenario, "-o", self.out, "--memory", "1 MB"])
 
     @unittest.skipUnless(os.geteuid() == 0, "needs root to become another user")
@@ -281,6 +283,35 @@ class Predict(unittest.TestCase):
         self.assertIn("pixels wide", done.stderr)
         done = run("predict", self.scenario, "-o", self.folder / "short", "--set", "electrons.energy_to=3 GeV")
         self.assertIn("the spectra end", done.stderr)
+
+    def test_quiet_inspect_prints_problems_only(self):
+        grid = self.grid_file()
+        for path in (self.scenario, grid):
+            self.assertGreater(len(run("inspect", path).stdout), 100)
+            done = run("inspect", path, "-q")
+            self.assertEqual((done.returncode, done.stdout, done.stderr), (0, "", ""))
+        with fits.open(grid, mode="update") as hdus:
+            hdus["B_TURB"].data[0, 0, 0] = -1
+        done = run("inspect", grid, "-q")
+        self.assertEqual((done.returncode, done.stdout.count("\n")), (4, 1), done.stdout)
+        self.assertTrue(done.stdout.startswith("problem:"), done.stdout)
+
+    def test_nuclei_that_are_not_used_are_named(self):
+        grid = self.grid_file()
+        with fits.open(grid, mode="update") as hdus:
+            hdus["E_LEPTON"].header.add_history("copied for helium")
+            nodes = fits.ImageHDU(hdus["E_LEPTON"].data, name="E_HELIUM")
+            nodes.header["BUNIT"] = hdus["E_LEPTON"].header["BUNIT"]
+            helium = fits.ImageHDU(hdus["CR_ELECTRON"].data, name="CR_HELIUM")
+            helium.header["BUNIT"] = hdus["CR_ELECTRON"].header["BUNIT"]
+            helium.header["AXES"] = hdus["CR_ELECTRON"].header["AXES"].replace("E_LEPTON", "E_HELIUM")
+            hdus.append(nodes)
+            hdus.append(helium)
+        self.scenario.write_text(f'input.grid = "{grid.name}"\nradio.frequencies = ["1.4 GHz"]\nradio.unit = "MJy/sr"\n'
+                                 'map.pixel = "20 arcsec"\nheights.models = ["exponential"]\n')
+        done = run("predict", self.scenario, "-o", self.out)
+        self.assertEqual(done.returncode, 0, done.stderr)
+        self.assertIn("CR_HELIUM is not used", done.stderr)
 
     def test_quiet_is_quiet(self):
         done = run("predict", self.scenario, "-o", self.out, "-q")

@@ -227,3 +227,25 @@ TEST_CASE("averages in parallel are those of one thread to the bit", "[media][av
         CHECK(one[c] == static_cast<float>(planes[c]));
     }
 }
+
+TEST_CASE("the averages of a separable profile are the products of its factors", "[media][cell-average]") {
+    const RunContext context;
+    const Grid boxes = scaled({Geometry::xyz, {-4, -1, 0.5, 3}, {-2, 0, 5}, {-3, -0.5, 0.25, 2}, false});
+    const Grid ringed = rings({0, 0.5, 2, 9}, {0, 0.1, 1, 6}, true);
+    for (const auto kind : {ProfileKind::double_exponential, ProfileKind::sech2, ProfileKind::gaussian}) {
+        const auto profile = profile_of(kind, 2, 0.7);
+        for (const Grid* grid : {&boxes, &ringed}) {
+            REQUIRE(average_factors(profile, *grid));
+            const auto whole = cell_averages(profile, *grid, false, context);
+            const auto direct = cell_averages(profile, *grid, 0, grid->nz(), false);
+            REQUIRE(whole.size() == direct.size());
+            for (std::size_t cell = 0; cell < direct.size(); ++cell) {
+                CHECK(static_cast<double>(whole[cell]) == Approx(direct[cell]).epsilon(1e-7)); // floats
+            }
+        }
+        auto flared = profile;
+        flared.flare = 5 * kpc;
+        CHECK_FALSE(average_factors(flared, ringed));
+    }
+    CHECK_FALSE(average_factors(profile_of(ProfileKind::beta, 2, 1), ringed));
+}

@@ -3,11 +3,11 @@
 
 Luminosities of every process, fluxes and maps of a small galaxy, seen at inclination 85 deg with and without a turn by 30 deg.
 What may differ is the oracle's error, which its documentation names:
-- electrons and protons: straight lines through E^2.75 N between 48 nodes (8 to the decade at most) and a trapezium on the nodes for
-  synchrotron radiation: second order, 1 %;
-- bremsstrahlung: relativistic formulae without the Coulomb and mass terms near threshold, ionised gas without the electron-electron
-  correction: 3 % at 100 MeV, 1 % above;
-- sight lines: one ray per pixel centre in steps of half the smallest cell, here FINER rays along each side of our pixels: 1 % (L1).
+- electrons and protons: straight lines through E^2.75 N between 48 nodes, 7 to the decade, second order: 0.3 %, near the pion peak
+  and thresholds 1 %; the trapezium of synchrotron radiation is good to 0.1 % on smooth spectra;
+- bremsstrahlung: relativistic formulae, neither mass terms nor the electron-electron correction at low energies: 1.5 %;
+- sight lines: one ray per pixel centre in steps of half the smallest cell, here FINER rays along each side of our pixels: 0.4 % of a
+  flux, 1 % of a map (L1; at azimuth 0 the rays run along the cells and fall together on the same side of their faces, else 0.3 %).
 The pion model is the published one without joining, which is what the oracle computes."""
 import pathlib
 import subprocess
@@ -72,7 +72,9 @@ def ours(folder, azimuth):
     for row in Table.read(out / "tables" / "channels.ecsv", format="ascii.ecsv"):
         luminosity.setdefault((row["band"], row["process"]), []).append(row["luminosity"])
     radio = [fits.getdata(p)[0] for p in (out / "maps" / f"radio_{n}.fits" for n in ("150MHz", "1.4GHz", "10GHz"))]
-    return {k: np.array(v) for k, v in luminosity.items()}, np.array(radio, float), np.array(fits.getdata(out / "maps" / "gamma.fits"), float)
+    gamma = np.array(fits.getdata(out / "maps" / "gamma.fits"), float)
+    parts = sum(np.array(fits.getdata(p), float) for p in sorted((out / "maps").glob("gamma_*.fits")))
+    return {k: np.array(v) for k, v in luminosity.items()}, np.array(radio, float), gamma, parts
 
 
 def oracle(folder, azimuth):
@@ -102,30 +104,36 @@ class Compare(unittest.TestCase):
         self.assertLess(np.abs(ratio - 1).max(), tolerance, name)
 
     def test_luminosities_of_every_process_agree(self):
-        for azimuth, ((luminosity, _, _), npz) in self.pairs.items():
-            self.check(f"synchrotron, azimuth {azimuth}", luminosity["radio", "total"], npz["luminosity_radio"], 0.01)
+        for azimuth, ((luminosity, _, _, _), npz) in self.pairs.items():
+            self.check(f"synchrotron, azimuth {azimuth}", luminosity["radio", "total"], npz["luminosity_radio"], 0.001)
         per_gev = 1e3
-        for process, name, tolerance in (("inverse_compton:cmb", "inverse_compton:2.7255", 0.01),
-                                         ("inverse_compton:dust", "inverse_compton:40", 0.01), ("pion_decay", "pion_decay", 0.01)):
+        for process, name, tolerance in (("inverse_compton:cmb", "inverse_compton:2.7255", 0.003),
+                                         ("inverse_compton:dust", "inverse_compton:40", 0.003), ("pion_decay", "pion_decay", 0.01)):
             self.check(process, luminosity["gamma", process], per_gev * npz["luminosity_" + name], tolerance)
         self.check("bremsstrahlung, neutral", luminosity["gamma", "bremsstrahlung:hi"] + luminosity["gamma", "bremsstrahlung:h2"],
-                   per_gev * npz["luminosity_bremsstrahlung:neutral"], 0.03)
+                   per_gev * npz["luminosity_bremsstrahlung:neutral"], 0.015)
         self.check("bremsstrahlung, ionised", luminosity["gamma", "bremsstrahlung:hii"],
-                   per_gev * npz["luminosity_bremsstrahlung:ionised"], 0.03)
+                   per_gev * npz["luminosity_bremsstrahlung:ionised"], 0.015)
         self.check("gamma, total", luminosity["gamma", "total"],
-                   per_gev * sum(v for k, v in npz.items() if k.startswith("luminosity_") and k != "luminosity_radio"), 0.02)
+                   per_gev * sum(v for k, v in npz.items() if k.startswith("luminosity_") and k != "luminosity_radio"), 0.01)
+
+    def test_maps_of_the_processes_add_up_to_the_total(self):
+        for (_, _, gamma, parts), _ in self.pairs.values():
+            self.assertLess((np.abs(parts - gamma).max((1, 2)) / gamma.max((1, 2))).max(), 1e-5)
 
     def test_fluxes_and_maps_agree(self):
-        for azimuth, ((_, radio, gamma), npz) in self.pairs.items():
+        for azimuth, ((_, radio, gamma, _), npz) in self.pairs.items():
             for name, mine, other, unit in (("radio", radio, npz["radio"], 1e-17), ("gamma", gamma, npz["gamma"], 1)):
                 other = other / unit
-                self.check(f"{name} flux, azimuth {azimuth}", mine.sum((1, 2)), other.sum((1, 2)), 0.02)
+                self.check(f"{name} flux, azimuth {azimuth}", mine.sum((1, 2)), other.sum((1, 2)), 0.006)
                 # The pattern of the map, without the difference in flux.
                 other = other * (mine.sum((1, 2)) / other.sum((1, 2)))[:, None, None]
                 distance = np.abs(mine - other).sum((1, 2)) / mine.sum((1, 2))
                 mirrored = np.abs(mine - other[:, :, ::-1]).sum((1, 2)) / mine.sum((1, 2))
                 print(f"{name} maps, azimuth {azimuth}: L1 {distance}, mirrored {mirrored}")
-                self.assertLess(distance.max(), 0.01)
+                self.assertLess(distance.max(), 0.01 if azimuth == 0 else 0.003)
+                if azimuth != 0:  # the galaxy is not the same on both sides, so that a mirrored map would be seen
+                    self.assertGreater(mirrored.min(), 3 * distance.max())
 
 
 if __name__ == "__main__":

@@ -8,19 +8,19 @@ namespace aureole {
 
 /// What went wrong, in the terms of the program's exit code.
 enum class ErrorKind {
-    runtime = 1,   ///< numerics or memory
-    usage = 2,     ///< command line
-    scenario = 3,  ///< scenario file
-    input = 4,     ///< data file
-    accuracy = 5,  ///< a conservation or convergence check failed
-    output = 6,    ///< a result cannot be written
+    runtime = 1,  ///< numerics or memory
+    usage = 2,    ///< command line
+    scenario = 3, ///< scenario file
+    input = 4,    ///< data file
+    accuracy = 5, ///< a conservation or convergence check failed
+    output = 6,   ///< a result cannot be written
     interrupted = 130,
 };
 
-/// The only exception aureole throws. The message names what was found and what was expected; frames that know
-/// a place (file, HDU, key) put it in front with in().
+/// The only exception aureole throws. The message names what was found and what was expected; frames that
+/// know a place (file, HDU, key) put it in front with in().
 class Error : public std::exception {
-public:
+  public:
     Error(ErrorKind kind, std::string message) : kind_(kind), message_(std::move(message)) {}
 
     /// Puts "place: " in front of the message.
@@ -31,7 +31,7 @@ public:
     ErrorKind kind() const noexcept { return kind_; }
     const char* what() const noexcept override { return message_.c_str(); }
 
-private:
+  private:
     ErrorKind kind_;
     std::string message_;
 };

@@ -9,8 +9,9 @@
 namespace aureole {
 
 /// Calls body(block) for every block in [0, blocks), on context.threads threads, in no fixed order. The first
-/// exception is thrown again after all threads have stopped. Results must not depend on the order: write to places of
-/// your own, and add partial sums by block index afterwards, so that the bits do not depend on the thread count.
+/// exception is thrown again after all threads have stopped. Results must not depend on the order: write to
+/// places of your own, and add partial sums by block index afterwards, so that the bits do not depend on the
+/// thread count.
 template <class Body> void for_each_block(const RunContext& context, std::size_t blocks, Body&& body) {
     std::exception_ptr failure = nullptr;
     std::atomic<bool> stop{false};

@@ -14,11 +14,11 @@ struct HduInfo {
     std::string name; ///< EXTNAME; "PRIMARY" for an unnamed primary HDU
     int number = 1;   ///< counted from 1
     bool is_image = true;
-    int bitpix = 0;                              ///< of the stored image, 0 where there are no data
-    std::vector<std::size_t> shape;              ///< NAXISn, first axis (fastest) first
-    bool compressed = false;                     ///< tile-compressed, or in a file packed as a whole: no place in the file
-    bool lossy = false;                          ///< compressed with quantisation
-    bool scaled = false;                         ///< BSCALE or BZERO other than 1 and 0
+    int bitpix = 0;                 ///< of the stored image, 0 where there are no data
+    std::vector<std::size_t> shape; ///< NAXISn, first axis (fastest) first
+    bool compressed = false;        ///< tile-compressed, or in a file packed as a whole: no place in the file
+    bool lossy = false;             ///< compressed with quantisation
+    bool scaled = false;            ///< BSCALE or BZERO other than 1 and 0
     std::size_t data_offset = 0, data_bytes = 0; ///< place in the file; without padding
     std::size_t values() const;
 };

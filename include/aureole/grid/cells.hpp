@@ -8,10 +8,10 @@
 
 namespace aureole::grid {
 
-/// The cells that emission fills and sight lines cross: the whole galaxy, mirror image included, and for an axisymmetric grid each ring
-/// cut into `sectors` equal sectors of azimuth, since an ordered field radiates differently at each azimuth.
-/// Cell index: i + nx (j + n2 k), i counts X or R, j counts Y or sectors (sector j spans azimuth 2 pi j/n to 2 pi (j+1)/n, from +x
-/// towards +y), k counts Z from below.
+/// The cells that emission fills and sight lines cross: the whole galaxy, mirror image included, and for an
+/// axisymmetric grid each ring cut into `sectors` equal sectors of azimuth, since an ordered field radiates
+/// differently at each azimuth. Cell index: i + nx (j + n2 k), i counts X or R, j counts Y or sectors (sector
+/// j spans azimuth 2 pi j/n to 2 pi (j+1)/n, from +x towards +y), k counts Z from below.
 struct Cells {
     Grid stored;             ///< what files and media hold
     std::vector<double> z;   ///< Z edges of both sides, cm

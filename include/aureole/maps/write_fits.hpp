@@ -24,6 +24,7 @@ struct MapOrigin {
 struct MapNotes {
     std::string process = "total";
     std::string type = "Intensity"; ///< BTYPE
+    double width = 0;               ///< Hz; of a radio channel, 0: a single frequency
     double flux = 0;                ///< of the map, in flux_unit
     std::string flux_unit;
     double flux_error = 0;      ///< relative miss of the flux check (FLUXCHK)

@@ -35,14 +35,15 @@ std::vector<double> cell_averages(const scenario::ProfileSpec& profile,
                                   std::size_t last_plane,
                                   bool allow_negative);
 
-/// A profile that is a function of R times one of z: averages over the columns, amplitude included, and over the
-/// layers. The average over a cell is across[i + nx j] x along[k].
+/// A profile that is a function of R times one of z: averages over the columns, amplitude included, and over
+/// the layers. The average over a cell is across[i + nx j] x along[k].
 struct AverageFactors {
     std::vector<double> across; ///< [plane_cells]
     std::vector<double> along;  ///< [nz]
 };
 
-/// Nothing unless the kind is double_exponential, sech2 or gaussian, without a flare. Accuracy as cell_averages.
+/// Nothing unless the kind is double_exponential, sech2 or gaussian, without a flare. Accuracy as
+/// cell_averages.
 std::optional<AverageFactors> average_factors(const scenario::ProfileSpec& profile, const grid::Grid& grid);
 
 /// The whole grid; in parallel over planes, or from the factors where there are such.
