@@ -44,7 +44,7 @@ struct Arguments {
 
 void add_common(CLI::App& app, Common& common) {
     app.add_flag("-q,--quiet", common.quiet, "Print errors only");
-    app.add_flag("-v,--verbose", common.verbosity, "Say more; twice for details");
+    app.add_flag("-v,--verbose", common.verbosity, "Say more");
     app.add_option("--color", common.colour, "Colour messages")
         ->check(CLI::IsMember({"auto", "always", "never"}))
         ->capture_default_str();
