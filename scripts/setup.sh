@@ -55,11 +55,14 @@ install_packages() {
 build() {
     local tests=$1
     shift
-    local launcher=()
-    command -v ccache >/dev/null && launcher=(-DCMAKE_CXX_COMPILER_LAUNCHER=ccache)
-    if [ ! -f "$build_folder/build.ninja" ] || ! grep -q "AUREOLE_BUILD_TESTS:BOOL=$tests" "$build_folder/CMakeCache.txt"; then
-        cmake -S "$project" -B "$build_folder" -G Ninja -DCMAKE_BUILD_TYPE=Release -DAUREOLE_WARNINGS_AS_ERRORS="${CI:+ON}" \
-            -DAUREOLE_BUILD_TESTS="$tests" "${launcher[@]}" >"$build_folder.log" 2>&1 || { cat "$build_folder.log" >&2; exit 1; }
+    local options=()
+    command -v ccache >/dev/null && options+=(-DCMAKE_CXX_COMPILER_LAUNCHER=ccache)
+    [ -n "${CI:-}" ] && options+=(-DAUREOLE_WARNINGS_AS_ERRORS=ON)
+    # A build with tests serves the demo as well: going back and forth between the two scripts compiles nothing again.
+    if [ ! -f "$build_folder/build.ninja" ] ||
+        { [ "$tests" = ON ] && ! grep -q "AUREOLE_BUILD_TESTS:BOOL=ON" "$build_folder/CMakeCache.txt"; }; then
+        cmake -S "$project" -B "$build_folder" -G Ninja -DCMAKE_BUILD_TYPE=Release -DAUREOLE_BUILD_TESTS="$tests" \
+            "${options[@]}" >"$build_folder.log" 2>&1 || { cat "$build_folder.log" >&2; exit 1; }
         rm -f "$build_folder.log"
     fi
     cmake --build "$build_folder" --target "$@"
