@@ -113,6 +113,26 @@ std::vector<FaceLines> edge_on_faces(const grid::Cells& cells, const Camera& cam
     return lines;
 }
 
+Steps steps(const std::vector<FaceLines>& lines) {
+    // A line that leaves its column by less than this fraction of a pixel per pixel is straight up.
+    constexpr double straight = 1e-12;
+    Steps result;
+    for (const FaceLines& faces : lines) {
+        if (std::abs(faces.per_y) <= straight * std::abs(faces.per_x)) {
+            result.along_x = &faces;
+        } else if (std::abs(faces.per_x) <= straight * std::abs(faces.per_y)) {
+            result.along_y = &faces;
+        }
+    }
+    return result;
+}
+
+std::size_t strip(const FaceLines& lines, double x, double y) {
+    const double height = lines.per_x * x + lines.per_y * y + lines.offset;
+    const auto edge = std::upper_bound(lines.edges.begin(), lines.edges.end(), height);
+    return static_cast<std::size_t>(edge - lines.edges.begin());
+}
+
 void cut_square(const Square& square, const std::vector<FaceLines>& lines, std::vector<Place>& places) {
     const double half = std::ldexp(0.5, -square.level);
     if (!is_crossed(square, lines, half)) {

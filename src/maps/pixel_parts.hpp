@@ -20,11 +20,22 @@ struct Place {
 };
 
 /// Cell faces seen edge-on by all sight lines: straight lines on the map at which the intensity jumps. Along
-/// them per_x x + per_y y + offset = edge.
+/// them per_x x + per_y y + offset = edge. Across them, from one line to the next, it is constant: the sight
+/// lines cross the same cells at the same places along the other axes.
 struct FaceLines {
     double per_x, per_y, offset;
     std::vector<double> edges;
 };
+
+/// The families of lines that are parallel to the columns (steps along x) or rows (steps along y) of the map.
+struct Steps {
+    const FaceLines* along_x = nullptr;
+    const FaceLines* along_y = nullptr;
+};
+Steps steps(const std::vector<FaceLines>& lines);
+
+/// Number of the strip that a place lies in.
+std::size_t strip(const FaceLines& lines, double x, double y);
 
 /// The faces that parallel sight lines are parallel to. Empty in perspective, and for cylinders (which are
 /// curved on the map).

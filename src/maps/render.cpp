@@ -33,6 +33,7 @@ struct Scene {
     Camera camera;
     sight::Tracer tracer;
     std::vector<FaceLines> faces;
+    Steps steps; // of `faces`
     std::size_t planes, nx, ny;
     std::size_t tiles_x, tiles_y;
 };
@@ -48,12 +49,14 @@ Scene make_scene(const emission::Emissivity& emissivity,
                 make_camera(view, pixels),
                 sight::make_tracer(emissivity.cells),
                 {},
+                {},
                 emissivity.planes.size(),
                 pixels.nx,
                 pixels.ny,
                 (pixels.nx + tile_side - 1) / tile_side,
                 (pixels.ny + tile_side - 1) / tile_side};
     scene.faces = edge_on_faces(emissivity.cells, scene.camera);
+    scene.steps = steps(scene.faces);
     assert(emissivity.value.size() == scene.planes * emissivity.cells.size());
     const double reach = half_diagonal(emissivity.cells);
     if (view.projection == sight::Projection::perspective && !(view.distance > reach)) {
@@ -66,8 +69,29 @@ Scene make_scene(const emission::Emissivity& emissivity,
     return scene;
 }
 
+/// The last few lines of sight where the map is made of steps: between two edges all of them are alike.
+struct Recent {
+    static constexpr std::size_t size = 8;
+    std::array<double, 2> place[size]; ///< number of the strip, or the coordinate where there are no steps
+    std::vector<double> intensity;     ///< [entry][plane]
+    std::size_t used = 0, next = 0;
+
+    const double* find(const std::array<double, 2>& wanted, std::size_t planes) const {
+        const auto* end = place + used;
+        const auto* found = std::find(place, end, wanted);
+        return found == end ? nullptr : intensity.data() + static_cast<std::size_t>(found - place) * planes;
+    }
+    void keep(const std::array<double, 2>& at, const double* values, std::size_t planes) {
+        place[next] = at;
+        std::copy(values, values + planes, intensity.data() + next * planes);
+        used = std::max(used, next + 1);
+        next = (next + 1) % size;
+    }
+};
+
 /// Buffers of one tile.
 struct Buffers {
+    Recent recent;
     std::vector<sight::Chord> chords;
     std::vector<Place> places;
     std::vector<double> children;         ///< [level][child][plane]
@@ -77,6 +101,7 @@ struct Buffers {
 Buffers make_buffers(const Scene& scene) {
     const auto levels = static_cast<std::size_t>(scene.options.max_level) + 1;
     Buffers buffers;
+    buffers.recent.intensity.resize(Recent::size * scene.planes);
     buffers.chords.resize(scene.tracer.longest);
     buffers.children.resize(levels * 4 * scene.planes);
     buffers.sum.resize(scene.planes);
@@ -96,21 +121,42 @@ void sample(const Scene& scene, std::vector<sight::Chord>& chords, double x, dou
     }
 }
 
-/// Mean intensities [plane] over a square from one ray through each of its parts; returns their number.
+/// The same, from a line traced before where there is one alike; returns the number of lines traced.
+std::size_t sample(const Scene& scene, Buffers& buffers, const Place& at, double* intensity) {
+    const Steps& steps = scene.steps;
+    if (steps.along_x == nullptr && steps.along_y == nullptr) {
+        sample(scene, buffers.chords, at.x, at.y, intensity);
+        return 1;
+    }
+    const auto place_along = [&](const FaceLines* lines, double coordinate) {
+        return lines == nullptr ? coordinate : static_cast<double>(strip(*lines, at.x, at.y));
+    };
+    const std::array<double, 2> place{place_along(steps.along_x, at.x), place_along(steps.along_y, at.y)};
+    if (const double* known = buffers.recent.find(place, scene.planes)) {
+        std::copy(known, known + scene.planes, intensity);
+        return 0;
+    }
+    sample(scene, buffers.chords, at.x, at.y, intensity);
+    buffers.recent.keep(place, intensity, scene.planes);
+    return 1;
+}
+
+/// Mean intensities [plane] over a square from one ray through each of its parts; returns the number of lines
+/// traced.
 std::size_t sample(const Scene& scene, Buffers& buffers, const Square& square, double* intensity) {
     cut_square(square, scene.faces, buffers.places);
     if (buffers.places.size() == 1) {
-        sample(scene, buffers.chords, buffers.places[0].x, buffers.places[0].y, intensity);
-        return 1;
+        return sample(scene, buffers, buffers.places[0], intensity);
     }
     std::fill(intensity, intensity + scene.planes, 0.0);
+    std::size_t traced = 0;
     for (const Place& place : buffers.places) {
-        sample(scene, buffers.chords, place.x, place.y, buffers.ray.data());
+        traced += sample(scene, buffers, place, buffers.ray.data());
         for (std::size_t p = 0; p < scene.planes; ++p) {
             intensity[p] += place.share * buffers.ray[p];
         }
     }
-    return buffers.places.size();
+    return traced;
 }
 
 /// One of the equal squares of `level` that a pixel is cut into, counted by rows.
@@ -140,10 +186,18 @@ Range tile_range(std::size_t tile, std::size_t size) {
     return {tile * tile_side, std::min(size, (tile + 1) * tile_side)};
 }
 
-/// Calls visit(i, j) for each pixel of a tile.
+/// Calls visit(i, j) for each pixel of a tile, neighbours along steps one after another.
 template <class Visit> void visit_tile(const Scene& scene, std::size_t tile, Visit&& visit) {
     const Range rows = tile_range(tile / scene.tiles_x, scene.ny);
     const Range columns = tile_range(tile % scene.tiles_x, scene.nx);
+    if (scene.steps.along_y != nullptr && scene.steps.along_x == nullptr) {
+        for (std::size_t i = columns.from; i < columns.to; ++i) {
+            for (std::size_t j = rows.from; j < rows.to; ++j) {
+                visit(i, j);
+            }
+        }
+        return;
+    }
     for (std::size_t j = rows.from; j < rows.to; ++j) {
         for (std::size_t i = columns.from; i < columns.to; ++i) {
             visit(i, j);
@@ -220,7 +274,7 @@ double allowed(const Scene& scene, const Plan& plan, std::size_t plane, double v
 }
 
 /// Error of the midpoint rule for one pixel, from second differences (at the map's border: first
-/// differences).
+/// differences). Along steps there is none, because pixels are cut at their edges.
 double
 midpoint_error(const Scene& scene, const Plan& plan, const float* plane, std::size_t i, std::size_t j) {
     const std::size_t nx = scene.nx;
@@ -228,8 +282,12 @@ midpoint_error(const Scene& scene, const Plan& plan, const float* plane, std::si
         return static_cast<double>(plane[column + nx * row]);
     };
     const double middle = at(i, j);
-    const double across = at(i > 0 ? i - 1 : i, j) + at(i + 1 < nx ? i + 1 : i, j) - 2 * middle;
-    const double along = at(i, j > 0 ? j - 1 : j) + at(i, j + 1 < scene.ny ? j + 1 : j) - 2 * middle;
+    const double across = scene.steps.along_x != nullptr
+                              ? 0.0
+                              : at(i > 0 ? i - 1 : i, j) + at(i + 1 < nx ? i + 1 : i, j) - 2 * middle;
+    const double along = scene.steps.along_y != nullptr
+                             ? 0.0
+                             : at(i, j > 0 ? j - 1 : j) + at(i, j + 1 < scene.ny ? j + 1 : j) - 2 * middle;
     return (std::abs(across) + std::abs(along)) / (24 * static_cast<double>(squares(plan.level[i + nx * j])));
 }
 
