@@ -401,7 +401,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
         emission::emit(inputs.grid, media, sources, inputs.channels, inputs.processes, orientation, context);
     note_timing(context, "emission", since);
     auto products = make_maps(emitted, inputs.channels, inputs.settings, context);
-    std::vector<float>().swap(emitted.emissivity.value); // = {} would keep the memory
+    LargeArray<float>().swap(emitted.emissivity.value); // = {} would keep the memory
     note_timing(context, "maps", since);
 
     std::vector<MapProduct> coarse;

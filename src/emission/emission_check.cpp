@@ -194,7 +194,9 @@ std::vector<MeanSpectrum> mean_spectra(const grid::Grid& grid,
             reader(cell, 1, spectrum.data(), spectrum.size());
             for (std::size_t t = 0; t < plan.terms.size(); ++t) {
                 if (plan.kernels[plan.terms[t].kernel].species == source.species) {
-                    add(means[t], volume[cell] * static_cast<double>(plan.terms[t].scalar(cell)), 0);
+                    float number = 0;
+                    plan.terms[t].numbers(cell, 1, &number);
+                    add(means[t], volume[cell] * static_cast<double>(number), 0);
                 }
             }
             if (source.species == Species::electrons && synchrotron) {

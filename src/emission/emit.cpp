@@ -119,7 +119,9 @@ struct SpeciesBlock {
 struct Scratch {
     Source::Reader electron_reader, proton_reader;
     SpeciesBlock electrons, protons;
-    std::vector<float> row; // all gamma planes of one cell
+    std::vector<float> rows;    // [cell][plane], radio planes 0
+    std::vector<float> totals;  // [cell][gamma channel]
+    std::vector<float> numbers; // [cell] of one term
 };
 
 /// Calls body(cell, i, j, k) for every cell of the whole galaxy that a stored cell stands for: sectors, then
@@ -206,22 +208,38 @@ std::vector<Plane> scaled_planes(Run& run) {
     return planes;
 }
 
-/// The gamma planes of one cell of the block; radio planes stay 0.
-void add_products(const Run& run, std::size_t stored_cell, std::size_t in_block, Scratch& scratch) {
+/// The gamma planes of the block's cells, `planes` numbers each; radio planes stay 0.
+void add_products(
+    const Run& run, std::size_t first, std::size_t count, std::size_t planes, Scratch& scratch) {
     const Layout& layout = run.layout;
-    for (std::size_t t = 0; t < run.plan.terms.size() && !layout.gamma.empty(); ++t) {
+    const std::size_t channels = layout.gamma.size();
+    scratch.rows.assign(count * planes, 0.0F);
+    scratch.totals.assign(count * channels, 0.0F);
+    scratch.numbers.resize(count);
+    for (std::size_t t = 0; t < run.plan.terms.size() && channels > 0; ++t) {
         const ProductTerm& term = run.plan.terms[t];
         const bool is_proton = run.plan.kernels[term.kernel].species == Species::protons;
         const ProductSet& set = is_proton ? run.proton_set : run.electron_set;
         const SpeciesBlock& species = is_proton ? scratch.protons : scratch.electrons;
-        const float scalar = term.scalar(stored_cell);
-        const float* sums = species.sums.data() + in_block * set.rows + set.first_row(term.kernel);
-        for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
-            const float value = std::max(0.0F, scalar * sums[g]);
-            scratch.row[layout.gamma[g]] += value;
-            if (!layout.term_start.empty()) {
-                scratch.row[layout.term_start[t] + g] += value;
+        term.numbers(first, count, scratch.numbers.data());
+        const float* sums = species.sums.data() + set.first_row(term.kernel);
+        const bool apart = !layout.term_start.empty();
+        for (std::size_t c = 0; c < count; ++c) {
+            float* total = scratch.totals.data() + c * channels;
+            float* own = apart ? scratch.rows.data() + c * planes + layout.term_start[t] : nullptr;
+            const float number = scratch.numbers[c];
+            for (std::size_t g = 0; g < channels; ++g) {
+                const float value = std::max(0.0F, number * sums[c * set.rows + g]);
+                total[g] += value;
+                if (apart) {
+                    own[g] += value;
+                }
             }
+        }
+    }
+    for (std::size_t c = 0; c < count; ++c) {
+        for (std::size_t g = 0; g < channels; ++g) {
+            scratch.rows[c * planes + layout.gamma[g]] = scratch.totals[c * channels + g];
         }
     }
 }
@@ -248,13 +266,13 @@ std::size_t emit_block(const Run& run,
     }
     const std::size_t planes = field.planes.size();
     const std::size_t stokes = run.layout.stokes;
+    add_products(run, first, count, planes, scratch);
     for (std::size_t c = 0; c < count; ++c) {
-        scratch.row.assign(planes, 0.0F);
-        add_products(run, first + c, c, scratch);
+        const float* row = scratch.rows.data() + c * planes;
         for_each_target(field.cells, first + c,
                         [&](std::size_t cell, std::size_t i, std::size_t j, std::size_t k) {
                             float* out = field.value.data() + cell * planes;
-                            std::copy(scratch.row.begin(), scratch.row.end(), out);
+                            std::copy_n(row, planes, out);
                             if (run.synchrotron.active()) {
                                 run.synchrotron.emit(
                                     field_seen(media.field, field.cells, first + c, i, j, k, orientation),
@@ -282,7 +300,7 @@ Emitted emit(const grid::Grid& grid,
     const bool turns_with_azimuth = run.synchrotron.active() && !media.field.ordered.empty();
     field.cells = grid::whole_galaxy(grid, turns_with_azimuth ? processes.sectors : 1);
     field.planes = scaled_planes(run);
-    field.value.assign(field.cells.size() * field.planes.size(), 0.0F);
+    field.value.resize(field.cells.size() * field.planes.size());
 
     constexpr std::size_t block_cells = 240;
     const std::size_t stored = grid.stored_cells();

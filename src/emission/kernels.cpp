@@ -69,9 +69,8 @@ inline __attribute__((always_inline)) void products_body(const float* __restrict
 }
 
 inline __attribute__((always_inline)) void interpolated_body(const RowTable& rows,
-                                                             std::size_t first_order,
-                                                             const float* __restrict fraction,
-                                                             std::size_t orders,
+                                                             std::size_t order,
+                                                             float towards,
                                                              const int* __restrict table,
                                                              const float* __restrict along,
                                                              std::size_t channels,
@@ -80,31 +79,17 @@ inline __attribute__((always_inline)) void interpolated_body(const RowTable& row
     const std::size_t nodes = rows.nodes;
     const std::size_t next = rows.orders * nodes;
     for (std::size_t c = 0; c < channels; ++c) {
-        const float* row =
-            rows.value + (static_cast<std::size_t>(table[c]) * rows.orders + first_order) * nodes;
+        const float* row = rows.value + (static_cast<std::size_t>(table[c]) * rows.orders + order) * nodes;
         const auto first_node = static_cast<std::size_t>(rows.first_node[table[c]]);
+        const float w01 = towards - towards * along[c], w00 = 1 - along[c] - w01;
+        const float w11 = towards * along[c], w10 = along[c] - w11;
         Lanes sum{};
-        if (orders == 4) {
-            const float high0 = fraction[0] * along[c], low0 = fraction[0] - high0;
-            const float high1 = fraction[1] * along[c], low1 = fraction[1] - high1;
-            const float high2 = fraction[2] * along[c], low2 = fraction[2] - high2;
-            const float high3 = fraction[3] * along[c], low3 = fraction[3] - high3;
-            for (std::size_t i = first_node; i < nodes; i += 16) {
-                const float* at = row + i;
-                Lanes even = lanes(at) * low0 + lanes(at + next) * high0;
-                at += nodes;
-                Lanes odd = lanes(at) * low1 + lanes(at + next) * high1;
-                at += nodes;
-                even += lanes(at) * low2 + lanes(at + next) * high2;
-                at += nodes;
-                odd += lanes(at) * low3 + lanes(at + next) * high3;
-                sum += (even + odd) * lanes(spectrum + i);
-            }
-        } else {
-            const float high = fraction[0] * along[c], low = fraction[0] - high;
-            for (std::size_t i = first_node; i < nodes; i += 16) {
-                sum += (lanes(row + i) * low + lanes(row + i + next) * high) * lanes(spectrum + i);
-            }
+        for (std::size_t i = first_node; i < nodes; i += 16) {
+            const float* low = row + i;
+            const float* high = low + next;
+            const Lanes weight = (lanes(low) * w00 + lanes(low + nodes) * w01) +
+                                 (lanes(high) * w10 + lanes(high + nodes) * w11);
+            sum += weight * lanes(spectrum + i);
         }
         out[c] = lane_sum(sum);
     }
@@ -131,27 +116,25 @@ void products_portable(const float* weights,
 }
 
 AUREOLE_HOT void interpolated_hot(const RowTable& rows,
-                                  std::size_t first_order,
-                                  const float* fraction,
-                                  std::size_t orders,
+                                  std::size_t order,
+                                  float towards,
                                   const int* table,
                                   const float* along,
                                   std::size_t channels,
                                   const float* spectrum,
                                   float* out) {
-    interpolated_body(rows, first_order, fraction, orders, table, along, channels, spectrum, out);
+    interpolated_body(rows, order, towards, table, along, channels, spectrum, out);
 }
 
 void interpolated_portable(const RowTable& rows,
-                           std::size_t first_order,
-                           const float* fraction,
-                           std::size_t orders,
+                           std::size_t order,
+                           float towards,
                            const int* table,
                            const float* along,
                            std::size_t channels,
                            const float* spectrum,
                            float* out) {
-    interpolated_body(rows, first_order, fraction, orders, table, along, channels, spectrum, out);
+    interpolated_body(rows, order, towards, table, along, channels, spectrum, out);
 }
 
 } // namespace
@@ -168,17 +151,16 @@ void products(const float* weights,
 }
 
 void interpolated_products(const RowTable& rows,
-                           std::size_t first_order,
-                           const float* fraction,
-                           std::size_t orders,
+                           std::size_t order,
+                           float towards,
                            const int* table,
                            const float* along,
                            std::size_t channels,
                            const float* spectrum,
                            float* out,
                            bool portable) {
-    (portable ? interpolated_portable : interpolated_hot)(rows, first_order, fraction, orders, table, along,
-                                                          channels, spectrum, out);
+    (portable ? interpolated_portable : interpolated_hot)(rows, order, towards, table, along, channels,
+                                                          spectrum, out);
 }
 
 } // namespace aureole::emission::kernels

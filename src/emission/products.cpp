@@ -27,8 +27,14 @@ using spectra::Species;
 
 constexpr double per_sr = 1 / (4 * constants::pi);
 
-std::function<float(std::size_t)> cell_value(const std::vector<float>& values) {
-    return [data = values.data()](std::size_t cell) { return data[cell]; };
+CellNumbers cell_values(const std::vector<float>& values) {
+    return [data = values.data()](std::size_t first, std::size_t count, float* out) {
+        std::copy_n(data + first, count, out);
+    };
+}
+
+CellNumbers same_everywhere(float value) {
+    return [value](std::size_t, std::size_t count, float* out) { std::fill_n(out, count, value); };
 }
 
 double electron_speed(double kinetic) {
@@ -129,10 +135,9 @@ physics::PionModel pion_model(const std::string& name) {
 ProductPlan
 plan_products(const media::Media& media, const Processes& processes, bool electrons, bool protons) {
     ProductPlan plan;
-    const auto add = [&](std::string process, ProductKernel kernel,
-                         std::function<float(std::size_t)> scalar) {
+    const auto add = [&](std::string process, ProductKernel kernel, CellNumbers numbers) {
         plan.kernels.push_back(std::move(kernel));
-        plan.terms.push_back({std::move(process), plan.kernels.size() - 1, std::move(scalar)});
+        plan.terms.push_back({std::move(process), plan.kernels.size() - 1, std::move(numbers)});
     };
     if (electrons && processes.inverse_compton) {
         for (const auto& field : media.radiation) {
@@ -140,15 +145,18 @@ plan_products(const media::Media& media, const Processes& processes, bool electr
             if (field.temperature > 0) {
                 const auto uniform = static_cast<float>(field.uniform_density);
                 add(process, blackbody_kernel(field.temperature),
-                    field.energy_density.empty() ? [uniform](std::size_t) { return uniform; }
-                                                 : cell_value(field.energy_density));
+                    field.energy_density.empty() ? same_everywhere(uniform)
+                                                 : cell_values(field.energy_density));
                 continue;
             }
             const std::size_t nodes = field.photon_energy.size();
             for (std::size_t node = 0; node < nodes; ++node) {
                 add(process, photon_node_kernel(field.photon_energy, node),
-                    [data = field.photon_density.data(), nodes, node](std::size_t cell) {
-                        return data[cell * nodes + node];
+                    [data = field.photon_density.data() + node, nodes](std::size_t first, std::size_t count,
+                                                                       float* out) {
+                        for (std::size_t c = 0; c < count; ++c) {
+                            out[c] = data[(first + c) * nodes];
+                        }
                     });
             }
         }
@@ -159,27 +167,34 @@ plan_products(const media::Media& media, const Processes& processes, bool electr
                 bremsstrahlung_kernel(physics::bremsstrahlung_atomic, processes.helium_fraction));
             const std::size_t neutral = plan.kernels.size() - 1;
             if (!media.gas.hi.empty()) {
-                plan.terms.push_back({"bremsstrahlung:hi", neutral, cell_value(media.gas.hi)});
+                plan.terms.push_back({"bremsstrahlung:hi", neutral, cell_values(media.gas.hi)});
             }
             if (!media.gas.h2.empty()) {
-                plan.terms.push_back({"bremsstrahlung:h2", neutral, cell_value(media.gas.h2)});
+                plan.terms.push_back({"bremsstrahlung:h2", neutral, cell_values(media.gas.h2)});
             }
         }
         if (!media.gas.hii.empty()) {
             add("bremsstrahlung:hii",
                 bremsstrahlung_kernel(physics::bremsstrahlung_ionised, processes.helium_fraction),
-                cell_value(media.gas.hii));
+                cell_values(media.gas.hii));
         }
     }
     if (protons && processes.pion_decay) {
-        const auto* hi = media.gas.hi.empty() ? nullptr : media.gas.hi.data();
-        const auto* h2 = media.gas.h2.empty() ? nullptr : media.gas.h2.data();
-        const auto* hii = media.gas.hii.empty() ? nullptr : media.gas.hii.data();
-        if (hi != nullptr || h2 != nullptr || hii != nullptr) {
+        std::vector<const float*> phases;
+        for (const auto* phase : {&media.gas.hi, &media.gas.h2, &media.gas.hii}) {
+            if (!phase->empty()) {
+                phases.push_back(phase->data());
+            }
+        }
+        if (!phases.empty()) {
             add("pion_decay", pion_kernel(processes.pion_model, processes.nuclear_enhancement),
-                [hi, h2, hii](std::size_t cell) {
-                    return (hi != nullptr ? hi[cell] : 0.0F) + (h2 != nullptr ? h2[cell] : 0.0F) +
-                           (hii != nullptr ? hii[cell] : 0.0F);
+                [phases](std::size_t first, std::size_t count, float* out) {
+                    std::fill_n(out, count, 0.0F);
+                    for (const float* phase : phases) {
+                        for (std::size_t c = 0; c < count; ++c) {
+                            out[c] += phase[first + c];
+                        }
+                    }
                 });
         }
     }

@@ -21,12 +21,15 @@ struct ProductKernel {
     std::function<std::vector<double>(double photon)> splits; ///< kinetic energies where the kernel bends
 };
 
+/// Writes the numbers of stored cells first .. first + count - 1.
+using CellNumbers = std::function<void(std::size_t first, std::size_t count, float* out)>;
+
 /// One contribution to the gamma channels: a kernel, the cell's number that multiplies it, and the process it
 /// belongs to.
 struct ProductTerm {
     std::string process;
     std::size_t kernel = 0;
-    std::function<float(std::size_t stored_cell)> scalar;
+    CellNumbers numbers;
 };
 
 struct ProductPlan {

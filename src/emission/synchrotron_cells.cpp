@@ -207,9 +207,11 @@ void SynchrotronCells::emit(const FieldSeen& seen,
     const auto amplitude = static_cast<float>(
         1e16 * std::exp((1 + SynchrotronRows::tilt) * (log_field - std::log(constants::microgauss))));
     const OrderPlace order = order_place(rows, seen.order);
-    const kernels::RowTable total{rows.total.data(), rows.order.size(), rows.stride, rows.first_node.data()};
-    const kernels::RowTable polarised{rows.polarised.data(), rows.order.size(), rows.stride,
+    const kernels::RowTable total{rows.total.data(), rows.fine_order.size(), rows.stride,
+                                  rows.first_node.data()};
+    const kernels::RowTable polarised{rows.polarised.data(), rows.fine_order.size(), rows.stride,
                                       rows.first_node.data()};
+    const CubicPlace cubic = negative.empty() ? CubicPlace{} : cubic_place(rows, seen.order);
     const bool with_stokes = !rows.polarised.empty();
     const std::size_t intervals = basis.intervals();
 
@@ -228,25 +230,25 @@ void SynchrotronCells::emit(const FieldSeen& seen,
             table[s] = static_cast<int>(place);
             along[s] = static_cast<float>(place - table[s]);
         }
-        kernels::interpolated_products(total, order.first, order.fraction, order.count, table, along, count,
-                                       spectrum, value, portable);
+        kernels::interpolated_products(total, order.first, order.towards, table, along, count, spectrum,
+                                       value, portable);
         if (with_stokes) {
-            kernels::interpolated_products(polarised, order.first, order.fraction, order.count, table, along,
-                                           count, spectrum, angle_value, portable);
+            kernels::interpolated_products(polarised, order.first, order.towards, table, along, count,
+                                           spectrum, angle_value, portable);
         }
         const auto corrected = [&](const std::vector<float>& fallback, std::size_t s) {
             float sum = 0;
             for (const std::size_t j : negative) {
                 const float* node = spectrum + basis.stencil_start(j);
-                for (std::size_t o = 0; o < order.count; ++o) {
+                for (std::size_t o = 0; o < cubic.fraction.size(); ++o) {
                     const float* low =
                         fallback.data() +
-                        (((order.first + o) * rows.tables + static_cast<std::size_t>(table[s])) * intervals +
+                        (((cubic.first + o) * rows.tables + static_cast<std::size_t>(table[s])) * intervals +
                          j) *
                             4;
                     const float* high = low + intervals * 4;
                     for (std::size_t n = 0; n < basis.stencil_size(); ++n) {
-                        sum += order.fraction[o] * (low[n] + along[s] * (high[n] - low[n])) * node[n];
+                        sum += cubic.fraction[o] * (low[n] + along[s] * (high[n] - low[n])) * node[n];
                     }
                 }
             }

@@ -15,9 +15,11 @@ namespace aureole::emission {
 
 namespace {
 
+constexpr int coarse_intervals = 12;
+constexpr int fine_per_coarse = 8;
+
 /// Orders of the table: close together near 1, where the tail of the kernel changes fastest.
-std::vector<double> table_orders() {
-    constexpr int intervals = 12;
+std::vector<double> table_orders(int intervals) {
     std::vector<double> order;
     for (int i = 0; i <= intervals; ++i) {
         order.push_back(std::sin(0.5 * constants::pi * i / intervals));
@@ -26,7 +28,39 @@ std::vector<double> table_orders() {
     return order;
 }
 
+/// Rows [fine order][stride] of one table from those [order][stride], cubic in the order.
+void refine_orders(const SynchrotronRows& rows, const float* coarse, float* fine) {
+    for (std::size_t f = 0; f < rows.fine_order.size(); ++f) {
+        const auto [first, fraction] = cubic_place(rows, rows.fine_order[f]);
+        const float* from = coarse + rows.stride * first;
+        float* to = fine + rows.stride * f;
+        for (std::size_t i = 0; i < rows.stride; ++i) {
+            to[i] = (fraction[0] * from[i] + fraction[1] * from[rows.stride + i]) +
+                    (fraction[2] * from[2 * rows.stride + i] + fraction[3] * from[3 * rows.stride + i]);
+        }
+    }
+}
+
 } // namespace
+
+CubicPlace cubic_place(const SynchrotronRows& rows, double order) {
+    const auto& node = rows.order;
+    const double t = std::clamp(order, 0.0, 1.0);
+    const auto above = std::upper_bound(node.begin() + 1, node.end() - 1, t);
+    const auto cell = static_cast<std::size_t>(above - node.begin()) - 1;
+    CubicPlace place;
+    place.first = std::min(cell == 0 ? 0 : cell - 1, node.size() - 4);
+    for (std::size_t a = 0; a < 4; ++a) {
+        double weight = 1;
+        for (std::size_t b = 0; b < 4; ++b) {
+            if (b != a) {
+                weight *= (t - node[place.first + b]) / (node[place.first + a] - node[place.first + b]);
+            }
+        }
+        place.fraction[a] = static_cast<float>(weight);
+    }
+    return place;
+}
 
 double synchrotron_constant() {
     return physics::synchrotron_power_constant / (4 * constants::pi);
@@ -37,7 +71,8 @@ SynchrotronRows synchrotron_rows(
     SynchrotronRows rows;
     rows.nodes = basis.nodes();
     rows.stride = (basis.nodes() + 15) / 16 * 16;
-    rows.order = table_orders();
+    rows.order = table_orders(coarse_intervals);
+    rows.fine_order = table_orders(coarse_intervals * fine_per_coarse);
     const auto lorentz = [](double kinetic) { return 1 + kinetic / constants::electron_rest_energy; };
     const double log_gamma2_last = 2 * std::log(lorentz(basis.energy().back()));
     rows.beyond = std::log(KernelTable::largest_x) + log_gamma2_last;
@@ -82,10 +117,10 @@ SynchrotronRows synchrotron_rows(
     rows.unit = largest;
 
     const std::size_t all_rows = rows.order.size() * rows.tables;
-    rows.total.assign(all_rows * rows.stride, 0.0F);
+    std::vector<float> total(all_rows * rows.stride, 0.0F);
+    std::vector<float> angle(polarised ? all_rows * rows.stride : 0, 0.0F);
     rows.total_fallback.assign(all_rows * basis.intervals() * 4, 0.0F);
     if (polarised) {
-        rows.polarised.assign(all_rows * rows.stride, 0.0F);
         rows.polarised_fallback.assign(all_rows * basis.intervals() * 4, 0.0F);
     }
     const auto fill = [&](std::size_t row) {
@@ -113,9 +148,9 @@ SynchrotronRows synchrotron_rows(
             sums[i] = sums[basis.nodes() + i] = 0;
         }
         for (std::size_t i = 0; i < basis.nodes(); ++i) {
-            rows.total[place + i] = static_cast<float>(flatten * sums[i]);
+            total[place + i] = static_cast<float>(flatten * sums[i]);
             if (polarised) {
-                rows.polarised[place + i] = static_cast<float>(flatten * sums[basis.nodes() + i]);
+                angle[place + i] = static_cast<float>(flatten * sums[basis.nodes() + i]);
             }
         }
         for (std::size_t i = 0; i < 4 * basis.intervals(); ++i) {
@@ -138,7 +173,7 @@ SynchrotronRows synchrotron_rows(
         std::size_t first = rows.nodes;
         for (std::size_t order = 0; order < rows.order.size(); ++order) {
             for (std::size_t t = table; t < std::min(table + 2, rows.tables); ++t) {
-                const float* row = rows.total.data() + (t * rows.order.size() + order) * rows.stride;
+                const float* row = total.data() + (t * rows.order.size() + order) * rows.stride;
                 const float* end = row + rows.nodes;
                 first = std::min(first, static_cast<std::size_t>(
                                             std::find_if(row, end, [](float w) { return w != 0; }) - row));
@@ -146,31 +181,26 @@ SynchrotronRows synchrotron_rows(
         }
         rows.first_node[table] = static_cast<int>(first / 16 * 16);
     }
+    const std::size_t coarse_size = rows.order.size() * rows.stride;
+    const std::size_t fine_size = rows.fine_order.size() * rows.stride;
+    rows.total.resize(rows.tables * fine_size);
+    rows.polarised.resize(polarised ? rows.tables * fine_size : 0);
+    for_each_block(context, rows.tables, [&](std::size_t table) {
+        refine_orders(rows, total.data() + table * coarse_size, rows.total.data() + table * fine_size);
+        if (polarised) {
+            refine_orders(rows, angle.data() + table * coarse_size,
+                          rows.polarised.data() + table * fine_size);
+        }
+    });
     return rows;
 }
 
 OrderPlace order_place(const SynchrotronRows& rows, double order) {
-    OrderPlace place;
-    const auto& node = rows.order;
     const double t = std::clamp(order, 0.0, 1.0);
-    if (t == node.front() || t == node.back()) {
-        place.first = t == node.front() ? 0 : node.size() - 1;
-        return place;
-    }
-    const auto above = std::upper_bound(node.begin(), node.end(), t);
-    const auto cell = static_cast<std::size_t>(above - node.begin()) - 1;
-    place.first = std::min(cell == 0 ? 0 : cell - 1, node.size() - 4);
-    place.count = 4;
-    for (std::size_t a = 0; a < 4; ++a) {
-        double weight = 1;
-        for (std::size_t b = 0; b < 4; ++b) {
-            if (b != a) {
-                weight *= (t - node[place.first + b]) / (node[place.first + a] - node[place.first + b]);
-            }
-        }
-        place.fraction[a] = static_cast<float>(weight);
-    }
-    return place;
+    const auto& node = rows.fine_order;
+    const double place = std::asin(t) * (2 / constants::pi) * static_cast<double>(node.size() - 1);
+    const std::size_t first = std::min(static_cast<std::size_t>(place), node.size() - 2);
+    return {first, static_cast<float>((t - node[first]) / (node[first + 1] - node[first]))};
 }
 
 } // namespace aureole::emission

@@ -51,6 +51,17 @@ Basis::Basis(std::vector<double> kinetic_energy) : energy_(std::move(kinetic_ene
             left_ratio_[j] = right_ratio_[j] = -1;
         }
     }
+    // At an end one weight is negative, that of the node across the next interval's; against that of the node
+    // between them it is largest, as a limit, where both vanish.
+    if (stencil_ == 4) {
+        const std::size_t last = intervals() - 1;
+        const double width = log_energy_[1] - log_energy_[0];
+        const auto first_weight = cubic(0, log_energy_[0] + 1e-6 * width);
+        const auto last_weight =
+            cubic(last, log_energy_[last + 1] - 1e-6 * (log_energy_[last + 1] - log_energy_[last]));
+        end_ratio_ = {static_cast<float>(1.0001 * std::abs(first_weight[2] / first_weight[1])),
+                      static_cast<float>(1.0001 * std::abs(last_weight[1] / last_weight[2]))};
+    }
 }
 
 std::size_t Basis::stencil_start(std::size_t interval) const {
@@ -115,6 +126,12 @@ std::size_t Basis::negative_intervals(const float* weighted, std::size_t* found)
         last > 2 && any_below_ratio(weighted + 1, left_ratio_.data() + 1, right_ratio_.data() + 1, last - 2);
     for (std::size_t j = 0; j < last; ++j) {
         const bool one_sided = left_ratio_[j] < 0;
+        if (one_sided && stencil_ == 4) {
+            if (j == 0 ? weighted[1] >= end_ratio_[0] * weighted[2]
+                       : weighted[last - 1] >= end_ratio_[1] * weighted[last - 2]) {
+                continue;
+            }
+        }
         if (!one_sided) {
             if (!suspects) {
                 j = last - 2;

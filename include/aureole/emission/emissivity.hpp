@@ -1,5 +1,6 @@
 #pragma once
 
+#include "aureole/base/large_array.hpp"
 #include "aureole/grid/cells.hpp"
 
 #include <cstddef>
@@ -27,7 +28,7 @@ struct Plane {
 struct Emissivity {
     grid::Cells cells;
     std::vector<Plane> planes;
-    std::vector<float> value;
+    LargeArray<float> value;
 };
 
 } // namespace aureole::emission

@@ -31,13 +31,11 @@ struct RowTable {
     const int* first_node;
 };
 
-/// orders is 1 or 4.
-/// out[c] = sum_i spectrum[i] sum_o fraction[o] ((1 - along[c]) row(first_order + o, table[c])[i] + along[c]
-/// row(first_order + o, table[c] + 1)[i])
+/// out[c] = sum_i spectrum[i] row_c[i], row_c between the four rows (order, order + 1) x (table[c], table[c]
+/// + 1): linear in both, `towards` and along[c] being the way from the first to the second.
 void interpolated_products(const RowTable& rows,
-                           std::size_t first_order,
-                           const float* fraction,
-                           std::size_t orders,
+                           std::size_t order,
+                           float towards,
                            const int* table,
                            const float* along,
                            std::size_t channels,

@@ -4,6 +4,7 @@
 #include "aureole/emission/kernels.hpp"
 #include "aureole/spectra/basis.hpp"
 
+#include <array>
 #include <cstddef>
 #include <vector>
 
@@ -19,8 +20,9 @@ struct SynchrotronRows {
     double first = 0, step = 0.02;     ///< of u
     std::size_t tables = 0;            ///< values of u
     std::size_t nodes = 0, stride = 0; ///< of a row, and its padded length
-    std::vector<double> order;         ///< values of t, 0 .. 1
-    std::vector<float> total;          ///< [table][order][stride], times `unit`
+    std::vector<double> order;         ///< values of t, 0 .. 1, at which the kernel was integrated
+    std::vector<double> fine_order;    ///< those of `total` and `polarised`, between which lines suffice
+    std::vector<float> total;          ///< [table][fine order][stride], times `unit`
     std::vector<float> polarised;      ///< the same; empty unless asked for
     std::vector<float> total_fallback; ///< [order][table][interval][4]
     std::vector<float> polarised_fallback;
@@ -33,12 +35,19 @@ struct SynchrotronRows {
 SynchrotronRows synchrotron_rows(
     const spectra::Basis& basis, double from, double to, bool polarised, const RunContext& context);
 
-/// Where a field lies between the table's orders: first index and the cubic (4) or exact (1) fractions.
+/// Where a field lies between two of the fine orders: the first, and the way to the second, 0 .. 1.
 struct OrderPlace {
-    std::size_t first = 0, count = 1;
-    float fraction[4] = {1, 0, 0, 0};
+    std::size_t first = 0;
+    float towards = 0;
 };
 OrderPlace order_place(const SynchrotronRows& rows, double order);
+
+/// The same for the fallback weights: the first of four orders and their cubic fractions.
+struct CubicPlace {
+    std::size_t first = 0;
+    std::array<float, 4> fraction{};
+};
+CubicPlace cubic_place(const SynchrotronRows& rows, double order);
 
 /// Constant C of  j = C B integral N(T) <b F(x/b)> dT  [erg s-1 cm-3 Hz-1 sr-1]: sqrt3 e^3 / (4 pi m c^2).
 double synchrotron_constant();

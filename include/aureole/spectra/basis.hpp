@@ -46,6 +46,7 @@ class Basis {
     // above that fraction of its outer neighbour, the cubic cannot be negative. Interior intervals of the
     // four-node stencil only.
     std::vector<float> left_ratio_, right_ratio_;
+    std::array<float, 2> end_ratio_{};
     std::vector<std::array<float, 4>> samples_; // 7 points per interval
 };
 
