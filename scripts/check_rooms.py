@@ -5,7 +5,7 @@ import pathlib
 import re
 import sys
 
-ROOMS = ["base", "files", "scenario", "physics", "grid", "media", "spectra", "emission", "sight", "maps", "profiles",
+ROOMS = ["base", "files", "scenario", "physics", "grid", "media", "spectra", "transport", "emission", "sight", "maps", "profiles",
          "report", "app"]
 OWNERS = {
     "fitsio.h": {"files"},
@@ -15,8 +15,9 @@ OWNERS = {
     "fftw3": {"maps"},
     "CLI": {"app"},
     "spdlog": {"app"},
-    "Eigen": {"profiles", "emission"},
-    "gsl": {"physics", "profiles"},
+    "Eigen": {"profiles", "emission", "transport"},
+    "klu": {"transport"},
+    "gsl": {"physics", "profiles", "transport"},
 }
 
 

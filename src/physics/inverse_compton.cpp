@@ -1,5 +1,7 @@
 #include "aureole/physics/inverse_compton.hpp"
 
+#include "photon_table.hpp"
+
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/base/quadrature.hpp"
@@ -70,41 +72,6 @@ double blackbody_integral(double first, double high, double recoil) {
     }
     return sum;
 }
-
-void check_table(std::span<const double> energy, std::span<const double> density) {
-    if (energy.size() < 2 || energy.size() != density.size()) {
-        throw Error(
-            ErrorKind::input,
-            fmt::format(
-                "photon spectrum: found {} energies and {} densities, expected the same number, at least 2",
-                energy.size(), density.size()));
-    }
-    for (std::size_t i = 0; i < energy.size(); ++i) {
-        if (!(energy[i] > (i == 0 ? 0.0 : energy[i - 1])) || !std::isfinite(energy[i])) {
-            throw Error(ErrorKind::input, fmt::format("photon spectrum: found energy {} erg at node {}, "
-                                                      "expected positive and ascending energies",
-                                                      energy[i], i));
-        }
-        if (!(density[i] >= 0) || !std::isfinite(density[i])) {
-            throw Error(
-                ErrorKind::input,
-                fmt::format("photon spectrum: found density {} at node {}, expected a finite density >= 0",
-                            density[i], i));
-        }
-    }
-}
-
-/// Density between two nodes: a power law, or a straight line where an end is 0.
-struct Segment {
-    double e0, e1, n0, n1;
-
-    double at(double energy) const {
-        if (n0 > 0 && n1 > 0) {
-            return n0 * std::pow(energy / e0, std::log(n1 / n0) / std::log(e1 / e0));
-        }
-        return n0 + (n1 - n0) * (energy - e0) / (e1 - e0);
-    }
-};
 
 } // namespace
 
@@ -216,7 +183,7 @@ double inverse_compton_tabulated_kernel(double gamma,
                                         double eps1,
                                         std::span<const double> energy,
                                         std::span<const double> density) {
-    check_table(energy, density);
+    photon_table::check(energy, density);
     const double z = eps1 / (gamma * rest);
     if (!(z > 0 && z < 1)) {
         return 0;
@@ -225,22 +192,19 @@ double inverse_compton_tabulated_kernel(double gamma,
     const double last = first * 4 * gamma * gamma;
     double sum = 0;
     for (std::size_t i = 1; i < energy.size(); ++i) {
-        const Segment segment{energy[i - 1], energy[i], density[i - 1], density[i]};
+        const photon_table::Segment segment{energy[i - 1], energy[i], density[i - 1], density[i]};
         const double from = std::max(segment.e0, first);
         const double to = std::min(segment.e1, last);
-        if (!(to > from) || (segment.n0 == 0 && segment.n1 == 0)) {
+        if (!(to > from) || segment.empty()) {
             continue;
         }
-        const double slope_range =
-            segment.n0 > 0 && segment.n1 > 0 ? std::abs(std::log(segment.n1 / segment.n0)) : 0.0;
-        const int panels = static_cast<int>(std::ceil(std::log(to / from) / 2.2 + slope_range / 9));
         sum += integrate_panels(
             panel_rule(),
             [&](double y) {
                 const double e = std::exp(y);
                 return segment.at(e) * bracket(std::min(1.0, first / e), recoil_term(z));
             },
-            std::log(from), std::log(to), panels);
+            std::log(from), std::log(to), segment.panels(from, to));
     }
     return kernel_scale(gamma) * sum;
 }

@@ -243,6 +243,25 @@ def kelner(e, t):
     return sigma / ep * b * inner(complex(x, h)).imag / h
 
 
+def blackbody_loss(gamma, temperature):
+    # energy of the photons that the Jones kernel scatters, over its limit 1/9 at b = 0, over the Planck spectrum
+    theta = gamma * si.k * temperature / si.e / MC2_EV
+
+    def scattered(b):
+        def integrand(y):
+            q = math.exp(y)
+            z = b * q / (1 + b * q)
+            bracket = 2 * q * y + (1 - q) * (1 + 2 * q + z * z / (2 * (1 - z)))
+            return q * q * bracket / (1 + b * q) ** 3
+        return 9 * quad(integrand, -30, 0, points=[-min(29, max(1, math.log(b + 2)))])
+
+    nodes, weights = np.polynomial.legendre.leggauss(160)
+    y = (4.1 + 20) / 2 * nodes + (4.1 - 20) / 2
+    total = sum(w * math.exp(4 * v) / math.expm1(math.exp(v)) * scattered(4 * theta * math.exp(v))
+                for v, w in zip(y, (4.1 + 20) / 2 * weights))
+    return total * 15 / math.pi ** 4
+
+
 CHECKS = {  # name: (function of a, b, c; largest relative difference)
     "f": (lambda a, b, c: f(a), 1e-11),
     "g": (lambda a, b, c: g(a), 1e-12),
@@ -250,6 +269,7 @@ CHECKS = {  # name: (function of a, b, c; largest relative difference)
     "mixed_f": (lambda a, b, c: mixed(a, b, fast_f, 0), 1e-10),
     "mixed_g": (lambda a, b, c: mixed(a, b, g, 2), 1e-10),
     "inverse_compton": (inverse_compton, 2e-10),
+    "blackbody_loss": (lambda a, b, c: blackbody_loss(a, b), 2e-9),
     "bethe_heitler": (lambda a, b, c: bethe_heitler(a, b), 1e-9),
     "screened_h": (lambda a, b, c: screened(a, b, s_hydrogen, 2), 1e-9),
     "screened_he": (lambda a, b, c: screened(a, b, s_helium, 6), 1e-9),

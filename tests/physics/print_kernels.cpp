@@ -4,10 +4,12 @@
 #include "aureole/base/constants.hpp"
 #include "aureole/physics/bremsstrahlung.hpp"
 #include "aureole/physics/inverse_compton.hpp"
+#include "aureole/physics/losses.hpp"
 #include "aureole/physics/pion_decay.hpp"
 #include "aureole/physics/synchrotron.hpp"
 
 #include <cstdio>
+#include <utility>
 
 namespace {
 
@@ -46,6 +48,11 @@ int main() {
                       inverse_compton_blackbody_kernel(gamma, eps1 * electronvolt, temperature));
             }
         }
+    }
+    const BlackbodyLoss blackbody;
+    for (const auto& [gamma, temperature] :
+         {std::pair{3e5, 30.0}, std::pair{7.8e6, 2.7255}, std::pair{2e5, 4000.0}, std::pair{1e8, 4000.0}}) {
+        print("blackbody_loss", gamma, temperature, 0, blackbody.factor(gamma, temperature));
     }
     for (const double e0 : {0.02, 1.0, 50.0}) { // GeV
         for (const double fraction : {0.01, 0.3, 0.8}) {
