@@ -6,6 +6,7 @@
 
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
+#include "aureole/base/parallel.hpp"
 #include "aureole/files/hash.hpp"
 #include "aureole/files/run_folder.hpp"
 #include "aureole/grid/scenario_grid.hpp"
@@ -19,7 +20,9 @@
 #include <algorithm>
 #include <chrono>
 #include <cmath>
+#include <functional>
 #include <initializer_list>
+#include <span>
 #include <tuple>
 
 namespace aureole::app {
@@ -108,14 +111,35 @@ maps::MapOrigin origin_of(const scenario::Scenario& scenario,
     return origin;
 }
 
+void write_cube(const std::filesystem::path& path,
+                std::span<const MapProduct> products,
+                const maps::MapOrigin& origin) {
+    std::vector<maps::Image> planes;
+    std::vector<maps::MapNotes> notes;
+    std::vector<double> energies;
+    for (const MapProduct& product : products) {
+        planes.push_back(product.image);
+        notes.push_back(product.notes);
+        energies.push_back(product.channel.from);
+    }
+    if (products.front().channel.is_band()) {
+        energies.push_back(products.back().channel.to);
+    }
+    maps::write_gamma_cube(path, planes, energies, origin, notes, false);
+}
+
 void write_maps(const std::vector<MapProduct>& products,
                 const maps::MapOrigin& origin,
                 bool spectral_index_maps,
-                files::RunFolder& folder) {
+                files::RunFolder& folder,
+                const RunContext& context) {
+    std::vector<std::function<void()>> writers;
     std::vector<const MapProduct*> radio;
     for (const MapProduct& product : products) {
         if (product.plane.band == Band::radio) {
-            maps::write_radio_map(folder.place(product.file), product.image, origin, product.notes, false);
+            writers.emplace_back([&origin, &product, path = folder.place(product.file)] {
+                maps::write_radio_map(path, product.image, origin, product.notes, false);
+            });
             if (!product.plane.is_signed) {
                 radio.push_back(&product);
             }
@@ -124,21 +148,14 @@ void write_maps(const std::vector<MapProduct>& products,
     // Planes of one gamma-ray process follow one another.
     for (std::size_t first = 0; first < products.size();) {
         std::size_t last = first;
-        std::vector<maps::Image> planes;
-        std::vector<maps::MapNotes> notes;
-        std::vector<double> energies;
         while (last < products.size() && products[last].file == products[first].file) {
-            planes.push_back(products[last].image);
-            notes.push_back(products[last].notes);
-            energies.push_back(products[last].channel.from);
             ++last;
         }
         if (products[first].plane.band == Band::gamma) {
-            if (products[first].channel.is_band()) {
-                energies.push_back(products[last - 1].channel.to);
-            }
-            maps::write_gamma_cube(folder.place(products[first].file), planes, energies, origin, notes,
-                                   false);
+            const std::span<const MapProduct> cube(products.data() + first, last - first);
+            writers.emplace_back([&origin, cube, path = folder.place(products[first].file)] {
+                write_cube(path, cube, origin);
+            });
         }
         first = last;
     }
@@ -159,13 +176,16 @@ void write_maps(const std::vector<MapProduct>& products,
             const std::string name =
                 fmt::format("maps/spectral_index_{}_{}.fits", file_label(radio[r - 1]->channel),
                             file_label(radio[r]->channel));
-            maps::write_plane(folder.place(name), spectral_index(radio[r - 1]->image, radio[r]->image, floor),
-                              origin, notes, false);
+            writers.emplace_back([&origin, notes, low = radio[r - 1], high = radio[r],
+                                  path = folder.place(name)] {
+                maps::write_plane(path, spectral_index(low->image, high->image, floor), origin, notes, false);
+            });
         }
     }
     if (radio.size() > 1) {
         maps::write_channel_table(folder.place("maps/channels.fits"), frequency, width, file, false);
     }
+    for_each_block(context, writers.size(), [&](std::size_t file) { writers[file](); });
 }
 
 std::vector<std::string> warnings_of(const emission::EmissionReport& report,
@@ -414,7 +434,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
         processes.sectors = std::max<std::size_t>(4, processes.sectors / 2);
         const auto coarse_emitted =
             emission::emit(grid::coarsened(inputs.grid), media::coarsened(media, inputs.grid), coarse_sources,
-                           inputs.channels, processes, orientation, context);
+                           inputs.channels, processes, orientation, context, &emitted);
         coarse = make_maps(coarse_emitted, inputs.channels, inputs.settings, context);
         estimate_errors(products, coarse);
         note_timing(context, "numerical error", since);
@@ -439,10 +459,10 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
     folder.begin_writing();
     folder.write_text("scenario.toml", effective);
     write_maps(products, origin_of(scenario, inputs.settings, hash, options.command),
-               scenario.boolean("map.spectral_index"), folder);
+               scenario.boolean("map.spectral_index"), folder, context);
     write_tables(folder, scenario, inputs.settings, products, heights, result.warnings, hash,
                  options.command);
-    folder.finish(options.command);
+    folder.finish(options.command, context);
     note_timing(context, "writing", since);
     result.files = folder.files();
     result.summary =

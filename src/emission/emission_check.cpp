@@ -8,7 +8,10 @@
 #include "aureole/physics/synchrotron.hpp"
 
 #include <algorithm>
+#include <array>
 #include <cmath>
+#include <map>
+#include <span>
 
 namespace aureole::emission {
 
@@ -100,54 +103,88 @@ struct Contribution {
     }
 };
 
-/// What one kernel makes of one mean spectrum, per unit weight.
-Contribution contribution(const Basis& basis,
-                          const MeanSpectrum& mean,
-                          const std::function<double(double)>& kernel,
-                          const std::vector<double>& splits) {
-    constexpr int points = 6;
-    constexpr double decades_up = 4;
-    constexpr double decades_down = 3;
-    Contribution result;
-    result.full = emission_of(integrate_kernel(basis, kernel, splits, points), basis, mean.value);
-    for (const std::size_t start : {0U, 1U}) {
+/// A basis with half the nodes.
+struct HalfBasis {
+    std::vector<std::size_t> kept;
+    Basis basis;
+};
+
+std::array<HalfBasis, 2> half_bases(const Basis& basis) {
+    const auto half = [&](std::size_t start) {
+        const auto kept = half_nodes(basis.nodes(), start);
         std::vector<double> energy;
-        std::vector<double> value;
-        for (const std::size_t i : half_nodes(basis.nodes(), start)) {
+        for (const std::size_t i : kept) {
             energy.push_back(basis.energy()[i]);
+        }
+        return HalfBasis{kept, Basis(energy)};
+    };
+    return {half(0), half(1)};
+}
+
+/// What the points of a kernel make of a mean spectrum, per unit weight, with all nodes and with half of
+/// them.
+Contribution contribution(const Basis& basis,
+                          const std::array<HalfBasis, 2>& halves,
+                          const MeanSpectrum& mean,
+                          std::span<const std::vector<KernelPoint>> photons) {
+    Contribution result;
+    result.full = emission_of(summed_row(basis, photons), basis, mean.value);
+    for (const HalfBasis& half : halves) {
+        std::vector<double> value;
+        for (const std::size_t i : half.kept) {
             value.push_back(mean.value[i]);
         }
-        const Basis half(energy);
-        const double coarse = emission_of(integrate_kernel(half, kernel, splits, points), half, value);
+        const double coarse = emission_of(summed_row(half.basis, photons), half.basis, value);
         result.change = std::max(result.change, std::abs(coarse - result.full));
-    }
-    if (mean.value.back() > 0) {
-        result.above = mean.value.back() * tail_weight(basis, kernel, splits,
-                                                       end_slope(basis, mean.value, true), true, decades_up);
-    }
-    if (mean.value.front() > 0) {
-        result.below =
-            mean.value.front() *
-            tail_weight(basis, kernel, splits, end_slope(basis, mean.value, false), false, decades_down);
     }
     return result;
 }
 
+/// Adds what the spectrum would give if it went on beyond its nodes.
+void add_tails(Contribution& result,
+               const Basis& basis,
+               const MeanSpectrum& mean,
+               const std::function<double(double)>& kernel,
+               const std::vector<double>& splits,
+               double weight) {
+    constexpr double decades_up = 4;
+    constexpr double decades_down = 3;
+    if (mean.value.back() > 0) {
+        result.above +=
+            weight * mean.value.back() *
+            tail_weight(basis, kernel, splits, end_slope(basis, mean.value, true), true, decades_up);
+    }
+    if (mean.value.front() > 0) {
+        result.below +=
+            weight * mean.value.front() *
+            tail_weight(basis, kernel, splits, end_slope(basis, mean.value, false), false, decades_down);
+    }
+}
+
 } // namespace
 
-std::vector<PlaneReport> luminosities(const Emissivity& emissivity) {
+std::vector<PlaneReport> luminosities(const Emissivity& emissivity, const RunContext& context) {
     const auto volume = grid::cell_volumes(emissivity.cells);
     const std::size_t planes = emissivity.planes.size();
-    std::vector<double> sum(planes, 0.0);
-    for (std::size_t cell = 0; cell < volume.size(); ++cell) {
-        const float* value = emissivity.value.data() + cell * planes;
-        for (std::size_t p = 0; p < planes; ++p) {
-            sum[p] += volume[cell] * static_cast<double>(value[p]);
+    const std::size_t layers = emissivity.cells.nz();
+    const std::size_t layer_cells = volume.size() / layers;
+    std::vector<double> sums(layers * planes, 0.0);
+    for_each_block(context, layers, [&](std::size_t layer) {
+        double* sum = sums.data() + layer * planes;
+        for (std::size_t cell = layer * layer_cells; cell < (layer + 1) * layer_cells; ++cell) {
+            const float* value = emissivity.value.data() + cell * planes;
+            for (std::size_t p = 0; p < planes; ++p) {
+                sum[p] += volume[cell] * static_cast<double>(value[p]);
+            }
         }
-    }
+    });
     std::vector<PlaneReport> reports(planes);
     for (std::size_t p = 0; p < planes; ++p) {
-        reports[p].luminosity = 4 * constants::pi * sum[p] * emissivity.planes[p].unit;
+        double sum = 0;
+        for (std::size_t layer = 0; layer < layers; ++layer) {
+            sum += sums[layer * planes + p];
+        }
+        reports[p].luminosity = 4 * constants::pi * sum * emissivity.planes[p].unit;
     }
     return reports;
 }
@@ -218,6 +255,7 @@ std::vector<MeanSpectrum> mean_spectra(const grid::Grid& grid,
 
 /// The kernel is that of a random field: what is ordered points everywhere in the mean over the galaxy.
 Contribution synchrotron_contribution(const Basis& basis,
+                                      const std::array<HalfBasis, 2>& halves,
                                       const MeanSpectrum& mean,
                                       const KernelTable& random_field,
                                       const Channel& channel) {
@@ -226,29 +264,35 @@ Contribution synchrotron_contribution(const Basis& basis,
         const double gamma = physics::lorentz_factor(kinetic, constants::electron_rest_energy);
         return random_field.at(log_x1 - 2 * std::log(gamma))[0];
     };
-    return contribution(basis, mean, kernel, {});
+    const std::vector<std::vector<KernelPoint>> points{kernel_points(basis, kernel, {}, 6)};
+    Contribution result = contribution(basis, halves, mean, points);
+    add_tails(result, basis, mean, kernel, {}, 1);
+    return result;
 }
 
 Contribution product_contribution(const Basis& basis,
+                                  const std::array<HalfBasis, 2>& halves,
                                   const MeanSpectrum& mean,
                                   const ProductKernel& kernel,
+                                  std::span<const std::vector<KernelPoint>> points,
                                   bool is_inverse_compton,
                                   const Channel& channel) {
-    Contribution sum;
+    Contribution result = contribution(basis, halves, mean, points);
     const auto photons = channel_photons(channel);
     for (std::size_t p = 0; p < photons.x.size(); ++p) {
         const double photon = photons.x[p];
-        const auto value = [&](double kinetic) { return kernel.value(kinetic, photon); };
-        Contribution one = contribution(basis, mean, value, kernel.splits(photon));
+        add_tails(
+            result, basis, mean, [&](double kinetic) { return kernel.value(kinetic, photon); },
+            kernel.splits(photon), photons.w[p]);
         if (is_inverse_compton) {
-            const double limit = 9 * constants::electron_rest_energy;
-            const auto slow_part = [&](double kinetic) { return kinetic < limit ? value(kinetic) : 0.0; };
-            one.slow = emission_of(integrate_kernel(basis, slow_part, std::vector<double>{limit}, 6), basis,
-                                   mean.value);
+            const double limit = std::log(9 * constants::electron_rest_energy);
+            const auto end = std::find_if(points[p].begin(), points[p].end(),
+                                          [&](const KernelPoint& point) { return point.log_energy > limit; });
+            const std::span slow(points[p].begin(), end);
+            result.slow += emission_of(weight_row(basis, slow), basis, mean.value);
         }
-        sum.add(one, photons.w[p]);
     }
-    return sum;
+    return result;
 }
 
 } // namespace
@@ -257,28 +301,39 @@ double check_spectra(std::vector<PlaneReport>& planes,
                      const grid::Grid& grid,
                      const media::Media& media,
                      const ProductPlan& plan,
+                     const std::array<const ProductSet*, 2>& sets,
                      const std::vector<Source>& sources,
                      const std::vector<Channel>& channels,
                      bool synchrotron,
                      const RunContext& context) {
     const auto means = mean_spectra(grid, media, plan, sources, synchrotron);
-    const auto basis_of = [&](Species species) -> const Basis& {
-        return *std::find_if(sources.begin(), sources.end(), [&](const Source& s) {
-                    return s.species == species;
-                })->basis;
-    };
+    std::map<Species, std::array<HalfBasis, 2>> halves;
+    std::map<Species, const Basis*> basis;
+    for (const Source& source : sources) {
+        basis[source.species] = source.basis.get();
+        halves.emplace(source.species, half_bases(*source.basis));
+    }
     const KernelTable random_field = synchrotron ? kernel_table(0) : KernelTable{};
     std::vector<double> slow(channels.size(), 0.0);
+    std::vector<std::size_t> place(channels.size(), 0); // of a gamma channel among its like
+    for (std::size_t c = 0, gamma = 0; c < channels.size(); ++c) {
+        place[c] = gamma;
+        gamma += channels[c].band == Band::gamma ? 1 : 0;
+    }
     for_each_block(context, channels.size(), [&](std::size_t c) {
         const Channel& channel = channels[c];
         Contribution sum;
         if (channel.band == Band::radio && means.back().weight > 0) {
-            sum = synchrotron_contribution(basis_of(Species::electrons), means.back(), random_field, channel);
+            sum = synchrotron_contribution(*basis.at(Species::electrons), halves.at(Species::electrons),
+                                           means.back(), random_field, channel);
         }
         for (std::size_t t = 0; t < plan.terms.size() && channel.band == Band::gamma; ++t) {
             if (means[t].weight > 0) {
                 const ProductKernel& kernel = plan.kernels[plan.terms[t].kernel];
-                sum.add(product_contribution(basis_of(kernel.species), means[t], kernel,
+                const ProductSet& set = *sets[kernel.species == Species::electrons ? 0 : 1];
+                sum.add(product_contribution(*basis.at(kernel.species), halves.at(kernel.species), means[t],
+                                             kernel,
+                                             set.points[set.first_row(plan.terms[t].kernel) + place[c]],
                                              plan.terms[t].process.starts_with("inverse_compton"), channel),
                         means[t].weight);
             }

@@ -4,12 +4,13 @@
 
 #include "aureole/emission/emit.hpp"
 
+#include <array>
 #include <vector>
 
 namespace aureole::emission {
 
 /// Luminosity of each plane: 4 pi x the sum of emissivity x volume over the galaxy.
-std::vector<PlaneReport> luminosities(const Emissivity& emissivity);
+std::vector<PlaneReport> luminosities(const Emissivity& emissivity, const RunContext& context);
 
 /// Fills, for the total plane of each channel, the share missing because the spectra end and the error from
 /// the energy nodes, from the mean spectrum behind each contribution in a sample of the cells.
@@ -18,12 +19,14 @@ std::vector<PlaneReport> luminosities(const Emissivity& emissivity);
 ///   without sign over the contributions, over `coarsening`. A cubic basis gains 2^4 from halved nodes where
 ///   the spectrum is smooth; the smaller divisor leaves room for spectra that are not. Changes that cancel
 ///   by chance are rare with two choices of nodes.
+/// sets: those of the electrons and of the protons.
 /// Returns the largest share, over the channels, of inverse-Compton emission that comes from electrons below
 /// gamma = 10.
 double check_spectra(std::vector<PlaneReport>& planes,
                      const grid::Grid& grid,
                      const media::Media& media,
                      const ProductPlan& plan,
+                     const std::array<const ProductSet*, 2>& sets,
                      const std::vector<spectra::Source>& sources,
                      const std::vector<Channel>& channels,
                      bool synchrotron,

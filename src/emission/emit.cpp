@@ -68,7 +68,7 @@ Layout lay_out(const std::vector<Channel>& channels,
 /// Spectra of a block of cells with what follows from them at once: products, and the intervals that fall
 /// back to straight lines.
 struct SpeciesBlock {
-    std::vector<float> spectra, sums;
+    LargeArray<float> spectra, sums;
     std::vector<std::size_t> negative, negative_start, found;
 
     std::span<const std::size_t> negative_of(std::size_t cell) const {
@@ -145,15 +145,28 @@ template <class Body> void for_each_target(const Cells& cells, std::size_t store
     }
 }
 
+} // namespace
+
+struct Tables {
+    ProductSet electron_set, proton_set;
+    SynchrotronCells synchrotron;
+    std::vector<double> gamma_unit; // [gamma channels] CGS of one stored unit
+};
+
+namespace {
+
 /// What all blocks of a run share.
 struct Run {
     const Source* electrons = nullptr;
     const Source* protons = nullptr;
     ProductPlan plan;
     Layout layout;
-    ProductSet electron_set, proton_set;
-    SynchrotronCells synchrotron;
+    std::shared_ptr<const Tables> tables;
     bool uses_electrons = false, uses_protons = false;
+
+    const ProductSet& electron_set() const { return tables->electron_set; }
+    const ProductSet& proton_set() const { return tables->proton_set; }
+    const SynchrotronCells& synchrotron() const { return tables->synchrotron; }
 
     Scratch scratch() const {
         Scratch result;
@@ -163,70 +176,82 @@ struct Run {
     }
 };
 
+std::shared_ptr<const Tables> make_tables(const Run& run,
+                                          const media::Media& media,
+                                          const std::vector<Channel>& channels,
+                                          bool synchrotron,
+                                          const RunContext& context) {
+    auto tables = std::make_shared<Tables>();
+    const auto& gamma = run.layout.gamma;
+    tables->electron_set =
+        build_products(run.plan, Species::electrons, run.electrons, channels, gamma, context);
+    tables->proton_set = build_products(run.plan, Species::protons, run.protons, channels, gamma, context);
+    if (synchrotron) {
+        tables->synchrotron = prepare_synchrotron(*run.electrons->basis, media.field, channels,
+                                                  run.layout.radio, run.layout.stokes != 0, context);
+    }
+    for (std::size_t g = 0; g < gamma.size(); ++g) {
+        tables->gamma_unit.push_back(
+            std::max({tables->electron_set.largest[g], tables->proton_set.largest[g], 1e-300}) * 1e-16);
+    }
+    pack(tables->electron_set, tables->gamma_unit);
+    pack(tables->proton_set, tables->gamma_unit);
+    return tables;
+}
+
 Run prepare(const media::Media& media,
             const std::vector<Source>& sources,
             const std::vector<Channel>& channels,
             const Processes& processes,
-            const RunContext& context) {
+            const RunContext& context,
+            const Emitted* alike) {
     Run run;
     run.electrons = find(sources, Species::electrons);
     run.protons = find(sources, Species::protons);
     run.plan = plan_products(media, processes, run.electrons != nullptr, run.protons != nullptr);
-    const bool wants_synchrotron = processes.synchrotron && run.electrons != nullptr;
-    run.layout = lay_out(channels, processes, run.plan, wants_synchrotron);
-    const auto& gamma = run.layout.gamma;
-    run.electron_set = build_products(run.plan, Species::electrons, run.electrons, channels, gamma, context);
-    run.proton_set = build_products(run.plan, Species::protons, run.protons, channels, gamma, context);
-    if (wants_synchrotron) {
-        run.synchrotron = prepare_synchrotron(*run.electrons->basis, media.field, channels, run.layout.radio,
-                                              run.layout.stokes != 0, context);
-    }
-    run.uses_protons = !run.proton_set.kernels.empty() && !gamma.empty();
-    run.uses_electrons = run.synchrotron.active() || (!run.electron_set.kernels.empty() && !gamma.empty());
+    const bool synchrotron = processes.synchrotron && run.electrons != nullptr;
+    run.layout = lay_out(channels, processes, run.plan, synchrotron);
+    run.tables = alike != nullptr ? alike->tables : make_tables(run, media, channels, synchrotron, context);
+    const bool gamma = !run.layout.gamma.empty();
+    run.uses_protons = gamma && !run.proton_set().kernels.empty();
+    run.uses_electrons = run.synchrotron().active() || (gamma && !run.electron_set().kernels.empty());
     return run;
 }
 
-/// The planes with the scale of their stored numbers; the weights are brought to it.
-std::vector<Plane> scaled_planes(Run& run) {
+/// The planes with the scale of their stored numbers.
+std::vector<Plane> scaled_planes(const Run& run) {
     const Layout& layout = run.layout;
-    std::vector<double> gamma_unit;
-    for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
-        gamma_unit.push_back(std::max({run.electron_set.largest[g], run.proton_set.largest[g], 1e-300}) *
-                             1e-16);
-    }
-    pack(run.electron_set, gamma_unit);
-    pack(run.proton_set, gamma_unit);
     auto planes = layout.planes;
     for (Plane& plane : planes) {
         for (std::size_t g = 0; g < layout.gamma.size(); ++g) {
-            plane.unit = plane.channel == layout.gamma[g] ? gamma_unit[g] : plane.unit;
+            plane.unit = plane.channel == layout.gamma[g] ? run.tables->gamma_unit[g] : plane.unit;
         }
-        for (std::size_t r = 0; r < layout.radio.size() && run.synchrotron.active(); ++r) {
-            plane.unit = plane.channel == layout.radio[r] ? run.synchrotron.unit[r] : plane.unit;
+        for (std::size_t r = 0; r < layout.radio.size() && run.synchrotron().active(); ++r) {
+            plane.unit = plane.channel == layout.radio[r] ? run.synchrotron().unit[r] : plane.unit;
         }
     }
     return planes;
 }
 
-/// The gamma planes of the block's cells, `planes` numbers each; radio planes stay 0.
+/// Writes the gamma planes of the block's cells to rows[cell][plane]; radio planes become 0.
 void add_products(
-    const Run& run, std::size_t first, std::size_t count, std::size_t planes, Scratch& scratch) {
+    const Run& run, std::size_t first, std::size_t count, std::size_t planes, Scratch& scratch, float* rows) {
     const Layout& layout = run.layout;
     const std::size_t channels = layout.gamma.size();
-    scratch.rows.assign(count * planes, 0.0F);
+    std::fill_n(rows, count * planes, 0.0F);
     scratch.totals.assign(count * channels, 0.0F);
     scratch.numbers.resize(count);
     for (std::size_t t = 0; t < run.plan.terms.size() && channels > 0; ++t) {
         const ProductTerm& term = run.plan.terms[t];
         const bool is_proton = run.plan.kernels[term.kernel].species == Species::protons;
-        const ProductSet& set = is_proton ? run.proton_set : run.electron_set;
+        const ProductSet& set = is_proton ? run.proton_set() : run.electron_set();
         const SpeciesBlock& species = is_proton ? scratch.protons : scratch.electrons;
         term.numbers(first, count, scratch.numbers.data());
         const float* sums = species.sums.data() + set.first_row(term.kernel);
         const bool apart = !layout.term_start.empty();
         for (std::size_t c = 0; c < count; ++c) {
             float* total = scratch.totals.data() + c * channels;
-            float* own = apart ? scratch.rows.data() + c * planes + layout.term_start[t] : nullptr;
+            float* own = apart ? rows + c * planes + layout.term_start[t] : nullptr;
             const float number = scratch.numbers[c];
             for (std::size_t g = 0; g < channels; ++g) {
                 const float value = std::max(0.0F, number * sums[c * set.rows + g]);
@@ -239,7 +264,7 @@ void add_products(
     }
     for (std::size_t c = 0; c < count; ++c) {
         for (std::size_t g = 0; g < channels; ++g) {
-            scratch.rows[c * planes + layout.gamma[g]] = scratch.totals[c * channels + g];
+            rows[c * planes + layout.gamma[g]] = scratch.totals[c * channels + g];
         }
     }
 }
@@ -256,27 +281,33 @@ std::size_t emit_block(const Run& run,
                        Emissivity& field) {
     std::size_t fallback_cells = 0;
     if (run.uses_protons) {
-        scratch.protons.read(*run.protons, scratch.proton_reader, run.proton_set, first, count, portable);
+        scratch.protons.read(*run.protons, scratch.proton_reader, run.proton_set(), first, count, portable);
         fallback_cells += scratch.protons.cells_with_fallback();
     }
     if (run.uses_electrons) {
-        scratch.electrons.read(*run.electrons, scratch.electron_reader, run.electron_set, first, count,
+        scratch.electrons.read(*run.electrons, scratch.electron_reader, run.electron_set(), first, count,
                                portable);
         fallback_cells += scratch.electrons.cells_with_fallback();
     }
     const std::size_t planes = field.planes.size();
     const std::size_t stokes = run.layout.stokes;
-    add_products(run, first, count, planes, scratch);
+    // A stored cell that stands for itself alone is filled in place.
+    const bool in_place = !field.cells.stored.mirrored && field.cells.sectors == 1;
+    scratch.rows.resize(in_place ? 0 : count * planes);
+    float* rows = in_place ? field.value.data() + first * planes : scratch.rows.data();
+    add_products(run, first, count, planes, scratch, rows);
     for (std::size_t c = 0; c < count; ++c) {
-        const float* row = scratch.rows.data() + c * planes;
+        const float* row = rows + c * planes;
         for_each_target(field.cells, first + c,
                         [&](std::size_t cell, std::size_t i, std::size_t j, std::size_t k) {
                             float* out = field.value.data() + cell * planes;
-                            std::copy_n(row, planes, out);
-                            if (run.synchrotron.active()) {
-                                run.synchrotron.emit(
+                            if (!in_place) {
+                                std::copy_n(row, planes, out);
+                            }
+                            if (run.synchrotron().active()) {
+                                run.synchrotron().emit(
                                     field_seen(media.field, field.cells, first + c, i, j, k, orientation),
-                                    scratch.electrons.spectra.data() + c * run.electron_set.stride,
+                                    scratch.electrons.spectra.data() + c * run.electron_set().stride,
                                     *run.electrons->basis, scratch.electrons.negative_of(c), run.layout.radio,
                                     out, stokes == 0 ? nullptr : out + stokes, portable);
                             }
@@ -293,11 +324,13 @@ Emitted emit(const grid::Grid& grid,
              const std::vector<Channel>& channels,
              const Processes& processes,
              const Orientation& orientation,
-             const RunContext& context) {
-    Run run = prepare(media, sources, channels, processes, context);
+             const RunContext& context,
+             const Emitted* alike) {
+    const Run run = prepare(media, sources, channels, processes, context, alike);
     Emitted result;
+    result.tables = run.tables;
     Emissivity& field = result.emissivity;
-    const bool turns_with_azimuth = run.synchrotron.active() && !media.field.ordered.empty();
+    const bool turns_with_azimuth = run.synchrotron().active() && !media.field.ordered.empty();
     field.cells = grid::whole_galaxy(grid, turns_with_azimuth ? processes.sectors : 1);
     field.planes = scaled_planes(run);
     field.value.resize(field.cells.size() * field.planes.size());
@@ -326,9 +359,12 @@ Emitted emit(const grid::Grid& grid,
     for (const std::size_t n : fallback_cells) {
         result.report.cells_with_fallback += n;
     }
-    result.report.planes = luminosities(field);
-    result.report.share_below_gamma_10 = check_spectra(result.report.planes, grid, media, run.plan, sources,
-                                                       channels, run.synchrotron.active(), context);
+    result.report.planes = luminosities(field, context);
+    if (alike == nullptr) {
+        result.report.share_below_gamma_10 = check_spectra(result.report.planes, grid, media, run.plan,
+                                                           {&run.electron_set(), &run.proton_set()}, sources,
+                                                           channels, run.synchrotron().active(), context);
+    }
     return result;
 }
 

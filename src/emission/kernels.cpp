@@ -16,15 +16,12 @@ inline __attribute__((always_inline)) const Lanes& lanes(const float* at) {
 }
 
 inline __attribute__((always_inline)) float lane_sum(const Lanes& v) {
-    const float* a = reinterpret_cast<const float*>(&v);
-    float eight[8], four[4];
-    for (int i = 0; i < 8; ++i) {
-        eight[i] = a[i] + a[i + 8];
-    }
-    for (int i = 0; i < 4; ++i) {
-        four[i] = eight[i] + eight[i + 4];
-    }
-    return (four[0] + four[2]) + (four[1] + four[3]);
+    const Lanes two = v + __builtin_shufflevector(v, v, 8, 9, 10, 11, 12, 13, 14, 15, 0, 1, 2, 3, 4, 5, 6, 7);
+    const Lanes four =
+        two + __builtin_shufflevector(two, two, 4, 5, 6, 7, 0, 1, 2, 3, 12, 13, 14, 15, 8, 9, 10, 11);
+    const Lanes eight =
+        four + __builtin_shufflevector(four, four, 2, 3, 0, 1, 6, 7, 4, 5, 10, 11, 8, 9, 14, 15, 12, 13);
+    return eight[0] + eight[1];
 }
 
 inline __attribute__((always_inline)) void products_body(const float* __restrict weights,

@@ -15,6 +15,7 @@
 #include <algorithm>
 #include <array>
 #include <cmath>
+#include <functional>
 
 namespace aureole::emission {
 
@@ -222,26 +223,38 @@ WeightedPoints channel_photons(const Channel& channel) {
 
 namespace {
 
-WeightRow channel_row(const spectra::Basis& basis, const ProductKernel& kernel, const Channel& channel) {
-    constexpr int points = 6;
-    WeightRow sum{std::vector<double>(basis.nodes(), 0.0), std::vector<double>(4 * basis.intervals(), 0.0)};
+/// Points of every photon of a channel, the photon's weight included.
+std::vector<std::vector<KernelPoint>>
+channel_points(const spectra::Basis& basis, const ProductKernel& kernel, const Channel& channel) {
+    constexpr int per_piece = 6;
+    std::vector<std::vector<KernelPoint>> result;
     const auto photons = channel_photons(channel);
     for (std::size_t p = 0; p < photons.x.size(); ++p) {
         const double photon = photons.x[p];
-        const auto row = integrate_kernel(
+        auto points = kernel_points(
             basis, [&](double kinetic) { return kernel.value(kinetic, photon); }, kernel.splits(photon),
-            points);
-        for (std::size_t i = 0; i < row.cubic.size(); ++i) {
-            sum.cubic[i] += photons.w[p] * row.cubic[i];
+            per_piece);
+        for (KernelPoint& point : points) {
+            point.value *= photons.w[p];
         }
-        for (std::size_t i = 0; i < row.fallback.size(); ++i) {
-            sum.fallback[i] += photons.w[p] * row.fallback[i];
-        }
+        result.push_back(std::move(points));
     }
-    return sum;
+    return result;
 }
 
 } // namespace
+
+WeightRow summed_row(const spectra::Basis& basis, std::span<const std::vector<KernelPoint>> photons) {
+    WeightRow sum = weight_row(basis, photons.front());
+    for (const auto& points : photons.subspan(1)) {
+        const WeightRow row = weight_row(basis, points);
+        std::transform(row.cubic.begin(), row.cubic.end(), sum.cubic.begin(), sum.cubic.begin(),
+                       std::plus<>());
+        std::transform(row.fallback.begin(), row.fallback.end(), sum.fallback.begin(), sum.fallback.begin(),
+                       std::plus<>());
+    }
+    return sum;
+}
 
 ProductSet build_products(const ProductPlan& plan,
                           Species species,
@@ -263,9 +276,11 @@ ProductSet build_products(const ProductPlan& plan,
         }
     }
     set.row.resize(set.kernels.size() * set.channels);
+    set.points.resize(set.row.size());
     for_each_block(context, set.row.size(), [&](std::size_t r) {
-        set.row[r] = channel_row(*source->basis, plan.kernels[set.kernels[r / set.channels]],
-                                 channels[gamma_channels[r % set.channels]]);
+        set.points[r] = channel_points(*source->basis, plan.kernels[set.kernels[r / set.channels]],
+                                       channels[gamma_channels[r % set.channels]]);
+        set.row[r] = summed_row(*source->basis, set.points[r]);
     });
     for (std::size_t r = 0; r < set.row.size(); ++r) {
         for (const double weight : set.row[r].cubic) {

@@ -7,6 +7,7 @@
 #include "aureole/physics/pion_decay.hpp"
 
 #include <functional>
+#include <span>
 #include <string>
 #include <vector>
 
@@ -47,16 +48,21 @@ plan_products(const media::Media& media, const Processes& processes, bool electr
 struct ProductSet {
     std::vector<std::size_t> kernels; ///< which of the plan
     std::vector<WeightRow> row;       ///< [kernels.size() x channels]
-    std::vector<double> largest;      ///< [channels] largest weight
+    /// [row][photon of the channel] what the rows are made of, weights of the photons included
+    std::vector<std::vector<std::vector<KernelPoint>>> points;
+    std::vector<double> largest; ///< [channels] largest weight
     std::size_t channels = 0, nodes = 0;
     std::size_t rows = 0, stride = 0; ///< padded
-    std::vector<float> packed;        ///< as kernels::products wants them
+    LargeArray<float> packed;         ///< as kernels::products wants them
     std::vector<float> fallback;      ///< [interval][4][rows]
 
     std::size_t first_row(std::size_t kernel) const;
     void
     add_fallback(const spectra::Basis& basis, std::size_t interval, const float* spectrum, float* sums) const;
 };
+
+/// The rows of several lists of points added up; at least one list.
+WeightRow summed_row(const spectra::Basis& basis, std::span<const std::vector<KernelPoint>> photons);
 
 ProductSet build_products(const ProductPlan& plan,
                           spectra::Species species,

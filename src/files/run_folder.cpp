@@ -1,6 +1,7 @@
 #include "aureole/files/run_folder.hpp"
 
 #include "aureole/base/error.hpp"
+#include "aureole/base/parallel.hpp"
 #include "aureole/files/hash.hpp"
 #include "aureole/files/json.hpp"
 #include "aureole/files/pending.hpp"
@@ -263,9 +264,10 @@ void RunFolder::write_text(const std::string& relative, std::string_view text) {
     files::write_text(place(relative), text, force_);
 }
 
-void RunFolder::finish(const std::string& command) {
-    Json::Array list;
-    for (const std::string& relative : files_) {
+void RunFolder::finish(const std::string& command, const RunContext& context) {
+    Json::Array list(files_.size());
+    for_each_block(context, files_.size(), [&](std::size_t file) {
+        const std::string& relative = files_[file];
         std::size_t bytes = 0;
         std::uint64_t hash = fnv1a("");
         std::ifstream stream(folder_ / relative, std::ios::binary);
@@ -280,8 +282,8 @@ void RunFolder::finish(const std::string& command) {
             hash = fnv1a(part, hash);
             bytes += part.size();
         }
-        list.push_back(Json::Object{{"path", relative}, {"bytes", bytes}, {"fnv1a", hex(hash)}});
-    }
+        list[file] = Json::Object{{"path", relative}, {"bytes", bytes}, {"fnv1a", hex(hash)}};
+    });
     const Json manifest =
         Json::Object{{"program", std::string("aureole ") + version}, {"command", command}, {"files", list}};
     files::write_text(folder_ / manifest_name, manifest.text(), true);

@@ -4,6 +4,8 @@
 
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
+#include "aureole/base/parallel.hpp"
+#include "aureole/base/pool.hpp"
 #include "aureole/files/fits_reader.hpp"
 
 #include <fmt/format.h>
@@ -486,22 +488,28 @@ std::string cell_text(const Grid& grid, std::size_t cell) {
 
 namespace {
 
-/// Reads an HDU of `per_cell` values a cell plane by plane, in CGS.
+/// Reads an HDU of `per_cell` values a cell plane by plane, in CGS, with a handle for every thread.
 template <class Store>
 void read_planes(const GridFile& file,
                  const std::string& name,
                  const Dimension& dimension,
                  bool allow_negative,
                  std::size_t per_cell,
+                 const RunContext& context,
                  const Store& store) {
     const DataHdu& data = file.hdu(name);
-    FitsReader reader(file.path);
-    const HduInfo& hdu = *reader.find(name);
     const double factor = unit_factor(data.unit, dimension);
     const std::size_t plane = file.grid.plane_cells() * per_cell;
-    std::vector<double> values(plane);
-    for (std::size_t k = 0; k < file.grid.nz(); ++k) {
-        reader.read(hdu, k * plane, plane, values.data());
+    struct Handle {
+        std::unique_ptr<FitsReader> reader;
+        std::vector<double> values;
+    };
+    Pool<Handle> handles([&] {
+        return Handle{std::make_unique<FitsReader>(file.path), std::vector<double>(plane)};
+    });
+    const auto read_plane = [&](Handle& handle, std::size_t k) {
+        std::vector<double>& values = handle.values;
+        handle.reader->read(*handle.reader->find(name), k * plane, plane, values.data());
         for (std::size_t v = 0; v < plane; ++v) {
             const double value = values[v] * factor;
             if (!std::isfinite(value) || (value < 0 && !allow_negative)) {
@@ -518,7 +526,11 @@ void read_planes(const GridFile& file,
             }
             store(k * plane + v, value);
         }
-    }
+    };
+    for_each_block(context, file.grid.nz(),
+                   [&](std::size_t k) { handles.with([&](Handle& handle) { read_plane(handle, k); }); });
+    FitsReader reader(file.path);
+    const HduInfo& hdu = *reader.find(name);
     if (reader.verify_checksum(hdu) == false) {
         throw Error(ErrorKind::input,
                     fmt::format("{}: HDU {}: the checksum does not match the data, expected an intact file",
@@ -528,26 +540,33 @@ void read_planes(const GridFile& file,
 
 } // namespace
 
-std::vector<float> read_scalar(const GridFile& file, const std::string& hdu, const Dimension& dimension) {
+std::vector<float> read_scalar(const GridFile& file,
+                               const std::string& hdu,
+                               const Dimension& dimension,
+                               const RunContext& context) {
     std::vector<float> values(file.grid.stored_cells());
-    read_planes(file, hdu, dimension, false, 1,
+    read_planes(file, hdu, dimension, false, 1, context,
                 [&](std::size_t v, double value) { values[v] = static_cast<float>(value); });
     return values;
 }
 
-std::vector<std::array<float, 3>>
-read_vector(const GridFile& file, const std::string& hdu, const Dimension& dimension) {
+std::vector<std::array<float, 3>> read_vector(const GridFile& file,
+                                              const std::string& hdu,
+                                              const Dimension& dimension,
+                                              const RunContext& context) {
     std::vector<std::array<float, 3>> values(file.grid.stored_cells());
-    read_planes(file, hdu, dimension, true, 3,
+    read_planes(file, hdu, dimension, true, 3, context,
                 [&](std::size_t v, double value) { values[v / 3][v % 3] = static_cast<float>(value); });
     return values;
 }
 
-std::vector<float>
-read_spectra_of_cells(const GridFile& file, const std::string& hdu, const Dimension& dimension) {
+std::vector<float> read_spectra_of_cells(const GridFile& file,
+                                         const std::string& hdu,
+                                         const Dimension& dimension,
+                                         const RunContext& context) {
     const std::size_t energies = file.hdu(hdu).shape.front();
     std::vector<float> values(file.grid.stored_cells() * energies);
-    read_planes(file, hdu, dimension, false, energies,
+    read_planes(file, hdu, dimension, false, energies, context,
                 [&](std::size_t v, double value) { values[v] = static_cast<float>(value); });
     return values;
 }

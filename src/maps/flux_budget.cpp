@@ -2,6 +2,7 @@
 
 #include "aureole/base/constants.hpp"
 #include "aureole/base/parallel.hpp"
+#include "aureole/base/pool.hpp"
 
 #include <algorithm>
 #include <cmath>
@@ -285,6 +286,46 @@ bool has_narrow_cells(const Cells& cells, const Camera& camera) {
     return smallest < steps * (camera.distance + (near ? half_diagonal(cells) : 0.0));
 }
 
+/// Smallest width on the map of any cell of a row along x (of a box grid, orthographic: no other depends on
+/// the place).
+double narrowest_of_row(const Cells& cells, const Camera& camera, std::size_t j, std::size_t k) {
+    const double sides[3] = {smallest_step(cells.stored.x), cells.stored.y[j + 1] - cells.stored.y[j],
+                             cells.z[k + 1] - cells.z[k]};
+    std::array<std::array<double, 2>, 3> edge{};
+    for (std::size_t axis = 0; axis < 3; ++axis) {
+        edge[axis] = {sides[axis] * camera.to_x[axis], sides[axis] * camera.to_y[axis]};
+    }
+    return smallest_width(edge);
+}
+
+void raise_levels_of_layer(std::vector<std::uint8_t>& levels,
+                           const emission::Emissivity& emissivity,
+                           const Camera& camera,
+                           const std::vector<float>& brightest,
+                           std::size_t k,
+                           int max_level) {
+    constexpr float bright = 0.01F;
+    const Cells& cells = emissivity.cells;
+    const std::size_t planes = emissivity.planes.size();
+    const bool even =
+        cells.stored.geometry == grid::Geometry::xyz && camera.projection == sight::Projection::orthographic;
+    for (std::size_t j = 0; j < cells.n2(); ++j) {
+        if (even && narrowest_of_row(cells, camera, j, k) >= 1) {
+            continue;
+        }
+        const float* value = emissivity.value.data() + planes * cells.nx() * (j + cells.n2() * k);
+        for (std::size_t i = 0; i < cells.nx(); ++i, value += planes) {
+            bool is_bright = false;
+            for (std::size_t p = 0; p < planes; ++p) {
+                is_bright |= std::abs(value[p]) > bright * brightest[p];
+            }
+            if (is_bright) {
+                raise_levels(levels, camera, cells, {i, j, k}, max_level);
+            }
+        }
+    }
+}
+
 } // namespace
 
 double half_diagonal(const Cells& cells) {
@@ -330,28 +371,24 @@ flux_budget(const emission::Emissivity& emissivity, const Camera& camera, const 
 std::vector<std::uint8_t> first_levels(const emission::Emissivity& emissivity,
                                        const Camera& camera,
                                        const std::vector<float>& brightest,
-                                       int max_level) {
-    constexpr float bright = 0.01F;
+                                       int max_level,
+                                       const RunContext& context) {
     const Cells& cells = emissivity.cells;
-    const std::size_t planes = emissivity.planes.size();
-    std::vector<std::uint8_t> levels(camera.pixels.nx * camera.pixels.ny, 0);
+    const std::size_t pixels = camera.pixels.nx * camera.pixels.ny;
+    std::vector<std::uint8_t> levels(pixels, 0);
     if (max_level == 0 || !has_narrow_cells(cells, camera)) {
         return levels;
     }
-    const float* value = emissivity.value.data();
-    for (std::size_t k = 0; k < cells.nz(); ++k) {
-        for (std::size_t j = 0; j < cells.n2(); ++j) {
-            for (std::size_t i = 0; i < cells.nx(); ++i, value += planes) {
-                bool is_bright = false;
-                for (std::size_t p = 0; p < planes; ++p) {
-                    is_bright = is_bright || std::abs(value[p]) > bright * brightest[p];
-                }
-                if (is_bright) {
-                    raise_levels(levels, camera, cells, {i, j, k}, max_level);
-                }
-            }
-        }
-    }
+    Pool<std::vector<std::uint8_t>> pool([&] { return std::vector<std::uint8_t>(pixels, 0); });
+    for_each_block(context, cells.nz(), [&](std::size_t k) {
+        pool.with([&](std::vector<std::uint8_t>& own) {
+            raise_levels_of_layer(own, emissivity, camera, brightest, k, max_level);
+        });
+    });
+    pool.for_each([&](const std::vector<std::uint8_t>& own) {
+        std::transform(own.begin(), own.end(), levels.begin(), levels.begin(),
+                       [](std::uint8_t a, std::uint8_t b) { return std::max(a, b); });
+    });
     return levels;
 }
 

@@ -31,6 +31,7 @@ double half_diagonal(const grid::Cells& cells);
 std::vector<std::uint8_t> first_levels(const emission::Emissivity& emissivity,
                                        const Camera& camera,
                                        const std::vector<float>& brightest,
-                                       int max_level);
+                                       int max_level,
+                                       const RunContext& context);
 
 } // namespace aureole::maps

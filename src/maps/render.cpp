@@ -429,18 +429,25 @@ void refine_marked(const Scene& scene, Plan& plan, Rendered& out, double from, d
 
 /// Adds up the map; row by row, so that the bits do not depend on threads.
 void add_up(const Scene& scene, const Plan& plan, Rendered& out) {
+    const std::size_t pixels = scene.nx * scene.ny;
+    std::vector<double> solid_angle(pixels);
+    for_each_block(scene.context, scene.ny, [&](std::size_t j) {
+        for (std::size_t i = 0; i < scene.nx; ++i) {
+            solid_angle[i + scene.nx * j] =
+                pixel_solid_angle(scene.camera, static_cast<double>(i), static_cast<double>(j));
+        }
+    });
     out.flux.assign(scene.planes, 0.0);
-    const float* value = out.value.data();
-    for (std::size_t p = 0; p < scene.planes; ++p) {
+    for_each_block(scene.context, scene.planes, [&](std::size_t p) {
+        const float* value = out.value.data() + p * pixels;
         for (std::size_t j = 0; j < scene.ny; ++j) {
             double row = 0;
-            for (std::size_t i = 0; i < scene.nx; ++i, ++value) {
-                row += static_cast<double>(*value) *
-                       pixel_solid_angle(scene.camera, static_cast<double>(i), static_cast<double>(j));
+            for (std::size_t i = scene.nx * j; i < scene.nx * (j + 1); ++i) {
+                row += static_cast<double>(value[i]) * solid_angle[i];
             }
             out.flux[p] += row;
         }
-    }
+    });
     out.rays = 0;
     out.levels = 0;
     out.sampling_error.assign(scene.planes, 0.0);
@@ -519,7 +526,7 @@ Rendered render(const emission::Emissivity& emissivity,
     out.flux_expected = budget.expected;
     out.flux_outside = budget.outside;
     Plan plan;
-    plan.level = first_levels(emissivity, scene.camera, budget.brightest, options.max_level);
+    plan.level = first_levels(emissivity, scene.camera, budget.brightest, options.max_level, context);
     plan.tiles.resize(scene.tiles_x * scene.tiles_y);
     render_round(scene, plan, out, 0, 0.9);
     for (int round = 0; round < extra_rounds && misses_flux(scene, budget, out) && deepen(scene, plan, out);

@@ -42,7 +42,7 @@ struct Loader {
                                         file == nullptr ? std::string("the scenario names no input.grid")
                                                         : fmt::format("{} has no HDU {}", file->path, hdu)));
             }
-            return read_scalar(*file, hdu, dimension);
+            return read_scalar(*file, hdu, dimension, context);
         }
         if (profile.kind == ProfileKind::none) {
             return {};
@@ -100,7 +100,7 @@ std::vector<std::array<float, 3>> ordered_field(const Loader& from) {
         if (!from.in_file("B_VECTOR")) {
             throw Error(ErrorKind::scenario, key + ".profile = \"file\", but there is no HDU B_VECTOR");
         }
-        return read_vector(*from.file, "B_VECTOR", dimension::magnetic_field);
+        return read_vector(*from.file, "B_VECTOR", dimension::magnetic_field, from.context);
     }
     if (profile.kind == ProfileKind::none) {
         return {};
@@ -191,7 +191,8 @@ std::vector<Radiation> radiation(const Loader& from) {
         Radiation field;
         field.name = "file";
         field.photon_energy = from.file->axes.at("EPS_PHOTON");
-        field.photon_density = read_spectra_of_cells(*from.file, "RADIATION", dimension::spectral_density);
+        field.photon_density =
+            read_spectra_of_cells(*from.file, "RADIATION", dimension::spectral_density, from.context);
         fields.push_back(std::move(field));
     }
     return fields;
@@ -217,7 +218,7 @@ Media load_media(const Scenario& scenario,
     media.turbulent_speed = from.scalar("turbulence.speed", "V_TURB", dimension::speed);
     media.turbulent_scale = from.scalar("turbulence.scale", "L_TURB", dimension::length);
     if (from.in_file("VELOCITY")) {
-        media.velocity = read_vector(*file, "VELOCITY", dimension::speed);
+        media.velocity = read_vector(*file, "VELOCITY", dimension::speed, context);
     }
     return media;
 }

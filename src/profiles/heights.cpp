@@ -5,6 +5,7 @@
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/base/parallel.hpp"
+#include "aureole/base/progress.hpp"
 
 #include <fmt/format.h>
 
@@ -266,27 +267,36 @@ bool same_plan(const maps::Image& a, const maps::Image& b, const ProfileSpec& sp
 
 std::vector<Profile>
 measure_profiles(std::span<const maps::Image> images, const HeightsSpec& spec, const RunContext& context) {
-    std::vector<Profile> profiles;
-    std::optional<Plan> shared;
-    std::size_t planned = 0;
+    std::vector<ProfileSpec> specs(images.size(), spec.profile);
+    std::vector<Plan> plans;
+    std::vector<std::size_t> plan_of(images.size(), 0);
     bool without_noise = false;
-    for (std::size_t image = 0; image < images.size(); ++image) {
+    for (std::size_t image = 0, planned = 0; image < images.size(); ++image) {
         context.check_interrupt();
-        ProfileSpec of_map = spec.profile;
         if (!spec.rms.empty()) {
-            of_map.rms = spec.rms[image];
+            specs[image].rms = spec.rms[image];
         }
-        const bool noiseless = of_map.rms && *of_map.rms == 0;
-        if (!shared || without_noise != noiseless || !same_plan(images[planned], images[image], of_map)) {
-            shared = plan(images[image], of_map);
+        const bool noiseless = specs[image].rms && *specs[image].rms == 0;
+        if (plans.empty() || without_noise != noiseless ||
+            !same_plan(images[planned], images[image], specs[image])) {
+            plans.push_back(plan(images[image], specs[image]));
             planned = image;
             without_noise = noiseless;
         }
-        for (Profile& profile : measure(images[image], of_map, *shared)) {
+        plan_of[image] = plans.size() - 1;
+    }
+    std::vector<std::vector<Profile>> measured(images.size());
+    Progress progress(context, "profiles", images.size());
+    for_each_block(context, images.size(), [&](std::size_t image) {
+        measured[image] = measure(images[image], specs[image], plans[plan_of[image]]);
+        progress.step();
+    });
+    std::vector<Profile> profiles;
+    for (std::size_t image = 0; image < images.size(); ++image) {
+        for (Profile& profile : measured[image]) {
             profile.image = image;
             profiles.push_back(std::move(profile));
         }
-        context.report("profiles", static_cast<double>(image + 1) / static_cast<double>(images.size()));
     }
     return profiles;
 }

@@ -253,7 +253,7 @@ std::vector<Source> open_sources(const scenario::Scenario& scenario,
             const auto profile = scenario.profile(key + ".energy_density");
             std::vector<float> density;
             if (file != nullptr && file->has(hdu) && !scenario.is_set(key + ".energy_density.profile")) {
-                density = grid::read_scalar(*file, hdu, dimension::energy_density);
+                density = grid::read_scalar(*file, hdu, dimension::energy_density, context);
             } else if (profile.kind == scenario::ProfileKind::none ||
                        profile.kind == scenario::ProfileKind::file) {
                 throw Error(

@@ -43,22 +43,51 @@ AUREOLE_HOT bool unpack_cells(const std::uint32_t* __restrict raw,
     return bad == 0;
 }
 
-AUREOLE_HOT int count_below_ratio(const float* __restrict node,
-                                  const float* __restrict left,
-                                  const float* __restrict right,
-                                  int count) {
-    int suspects = 0;
-    for (int j = 0; j < count; ++j) {
-        suspects += static_cast<int>(node[j] < left[j] * node[j - 1]) |
-                    static_cast<int>(node[j + 1] < right[j] * node[j + 2]);
+typedef float Lanes __attribute__((vector_size(64), aligned(4), may_alias));
+typedef int LaneBits __attribute__((vector_size(64)));
+
+inline __attribute__((always_inline)) const Lanes& lanes(const float* at) {
+    return *reinterpret_cast<const Lanes*>(at);
+}
+
+AUREOLE_HOT bool below_ratio(const float* node, const float* left, const float* right, std::size_t count) {
+    constexpr std::size_t width = 16;
+    if (count < width) {
+        bool below = false;
+        for (std::size_t j = 0; j < count; ++j) {
+            below |= node[j] < left[j] * node[static_cast<std::ptrdiff_t>(j) - 1] ||
+                     node[j + 1] < right[j] * node[j + 2];
+        }
+        return below;
     }
-    return suspects;
+    LaneBits below{};
+    for (std::size_t j = 0; j < count; j += width) {
+        j = j + width > count ? count - width : j; // the last ones are looked at twice
+        below |= (lanes(node + j) < lanes(left + j) * lanes(node + j - 1)) |
+                 (lanes(node + j + 1) < lanes(right + j) * lanes(node + j + 2));
+    }
+    int any = 0;
+    for (std::size_t lane = 0; lane < width; ++lane) {
+        any |= below[lane];
+    }
+    return any != 0;
+}
+
+AUREOLE_HOT void
+add_scaled_nodes(const float* __restrict from, float factor, std::size_t count, float* __restrict to) {
+    for (std::size_t i = 0; i < count; ++i) {
+        to[i] += factor * from[i];
+    }
 }
 
 } // namespace
 
 bool any_below_ratio(const float* node, const float* left, const float* right, std::size_t count) {
-    return count_below_ratio(node, left, right, static_cast<int>(count)) > 0;
+    return below_ratio(node, left, right, count);
+}
+
+void add_scaled(const float* from, float factor, std::size_t count, float* to) {
+    add_scaled_nodes(from, factor, count, to);
 }
 
 bool unpack(const std::uint32_t* raw,

@@ -21,6 +21,13 @@ template <class T> class Pool {
         idle_.push_back(std::move(one));
     }
 
+    /// Visits all of them, when none is in use.
+    template <class Visit> void for_each(Visit&& visit) const {
+        for (const T& one : idle_) {
+            visit(one);
+        }
+    }
+
   private:
     T take() {
         {

@@ -8,6 +8,7 @@
 
 #include <array>
 #include <cstddef>
+#include <memory>
 #include <optional>
 #include <string>
 #include <vector>
@@ -58,19 +59,25 @@ struct EmissionReport {
         0; ///< largest share, over the channels, of inverse-Compton emission from electrons of gamma < 10
 };
 
+/// Weights of a run that do not depend on the cells.
+struct Tables;
+
 struct Emitted {
     Emissivity emissivity;
     EmissionReport report;
+    std::shared_ptr<const Tables> tables;
 };
 
 /// Fills the emissivity of all channels in one pass through the spectra. The result does not depend on the
-/// number of threads.
+/// number of threads. alike: an earlier run with the same channels, processes, radiation fields and energy
+/// nodes on other cells; its tables are used again, and of the report only the luminosities are filled.
 Emitted emit(const grid::Grid& grid,
              const media::Media& media,
              const std::vector<spectra::Source>& sources,
              const std::vector<Channel>& channels,
              const Processes& processes,
              const Orientation& orientation,
-             const RunContext& context);
+             const RunContext& context,
+             const Emitted* alike = nullptr);
 
 } // namespace aureole::emission

@@ -1,5 +1,6 @@
 #pragma once
 
+#include "aureole/base/large_array.hpp"
 #include "aureole/base/run_context.hpp"
 #include "aureole/emission/kernels.hpp"
 #include "aureole/spectra/basis.hpp"
@@ -22,8 +23,8 @@ struct SynchrotronRows {
     std::size_t nodes = 0, stride = 0; ///< of a row, and its padded length
     std::vector<double> order;         ///< values of t, 0 .. 1, at which the kernel was integrated
     std::vector<double> fine_order;    ///< those of `total` and `polarised`, between which lines suffice
-    std::vector<float> total;          ///< [table][fine order][stride], times `unit`
-    std::vector<float> polarised;      ///< the same; empty unless asked for
+    LargeArray<float> total;           ///< [table][fine order][stride], times `unit`
+    LargeArray<float> polarised;       ///< the same; empty unless asked for
     std::vector<float> total_fallback; ///< [order][table][interval][4]
     std::vector<float> polarised_fallback;
     std::vector<int> first_node; ///< [table] before it this row and the next are zero; a multiple of 16

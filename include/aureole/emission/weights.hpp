@@ -17,9 +17,24 @@ struct WeightRow {
     std::vector<double> fallback; ///< [intervals][4]
 };
 
+/// A kernel at the points of a quadrature over the nodes of a basis.
+struct KernelPoint {
+    double log_energy; ///< ln T, T in erg
+    double value;      ///< kernel(T) T^(1 - s) x weight of the point in ln T
+};
+
 /// kernel(T): CGS, T in erg; need not be smooth at `splits` (erg; any order, those outside the nodes are
-/// ignored). Gauss-Legendre with `points` per piece between nodes and splits. Exact for the interpolant up to
-/// the smoothness of the kernel in one piece.
+/// ignored). Gauss-Legendre with `points` per piece between nodes and splits, in ascending order.
+std::vector<KernelPoint> kernel_points(const spectra::Basis& basis,
+                                       const std::function<double(double)>& kernel,
+                                       std::span<const double> splits,
+                                       int points);
+
+/// The row that the points make on a basis, whose nodes must be some or all of those that the points were
+/// made for, ends included. Exact for the interpolant up to the smoothness of the kernel in one piece.
+WeightRow weight_row(const spectra::Basis& basis, std::span<const KernelPoint> points);
+
+/// Both.
 WeightRow integrate_kernel(const spectra::Basis& basis,
                            const std::function<double(double)>& kernel,
                            std::span<const double> splits,

@@ -1,6 +1,8 @@
 #pragma once
 
 #include <cstddef>
+#include "aureole/base/run_context.hpp"
+
 #include <filesystem>
 #include <string>
 #include <string_view>
@@ -36,7 +38,7 @@ class RunFolder {
     /// Whether files may be replaced that no manifest names: `force`.
     bool replaces() const { return force_; }
     /// Writes the manifest (path, size and FNV-1a of every file): the run is complete.
-    void finish(const std::string& command);
+    void finish(const std::string& command, const RunContext& context = {});
 
     const std::vector<std::string>& files() const { return files_; }
     const std::filesystem::path& path() const { return folder_; }

@@ -1,5 +1,6 @@
 #pragma once
 
+#include "aureole/base/run_context.hpp"
 #include "aureole/base/units.hpp"
 #include "aureole/grid/grid.hpp"
 
@@ -62,15 +63,22 @@ GridFileContents examine(const GridFile& file);
 
 /// Values of a scalar HDU over the stored cells, in CGS. Throws Error(input) naming HDU, cell and value where
 /// one is negative or not finite, or where the unit does not fit.
-std::vector<float> read_scalar(const GridFile& file, const std::string& hdu, const Dimension& dimension);
+std::vector<float> read_scalar(const GridFile& file,
+                               const std::string& hdu,
+                               const Dimension& dimension,
+                               const RunContext& context = {});
 
 /// The same for HDUs of three components (COMP axis first); any sign.
-std::vector<std::array<float, 3>>
-read_vector(const GridFile& file, const std::string& hdu, const Dimension& dimension);
+std::vector<std::array<float, 3>> read_vector(const GridFile& file,
+                                              const std::string& hdu,
+                                              const Dimension& dimension,
+                                              const RunContext& context = {});
 
 /// The same for HDUs with an energy axis first: [cells][energies].
-std::vector<float>
-read_spectra_of_cells(const GridFile& file, const std::string& hdu, const Dimension& dimension);
+std::vector<float> read_spectra_of_cells(const GridFile& file,
+                                         const std::string& hdu,
+                                         const Dimension& dimension,
+                                         const RunContext& context = {});
 
 /// Name of a cell for messages, counted from 1: "cell (X 3, Y 4, Z 5)".
 std::string cell_text(const Grid& grid, std::size_t cell);

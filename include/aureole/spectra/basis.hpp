@@ -23,6 +23,7 @@ class Basis {
     std::size_t nodes() const { return energy_.size(); }
     std::size_t intervals() const { return energy_.size() - 1; }
     std::span<const double> energy() const { return energy_; } ///< erg
+    std::span<const double> log_energy() const { return log_energy_; }
     /// First node of the stencil of an interval, and the number of nodes in it (4, or all where there are
     /// fewer).
     std::size_t stencil_start(std::size_t interval) const;

@@ -22,4 +22,7 @@ bool unpack(const std::uint32_t* raw,
 /// .. node[count + 1] must exist.
 bool any_below_ratio(const float* node, const float* left, const float* right, std::size_t count);
 
+/// to[i] += factor from[i].
+void add_scaled(const float* from, float factor, std::size_t count, float* to);
+
 } // namespace aureole::spectra
