@@ -161,36 +161,6 @@ void add_tails(Contribution& result,
     }
 }
 
-} // namespace
-
-std::vector<PlaneReport> luminosities(const Emissivity& emissivity, const RunContext& context) {
-    const auto volume = grid::cell_volumes(emissivity.cells);
-    const std::size_t planes = emissivity.planes.size();
-    const std::size_t layers = emissivity.cells.nz();
-    const std::size_t layer_cells = volume.size() / layers;
-    std::vector<double> sums(layers * planes, 0.0);
-    for_each_block(context, layers, [&](std::size_t layer) {
-        double* sum = sums.data() + layer * planes;
-        for (std::size_t cell = layer * layer_cells; cell < (layer + 1) * layer_cells; ++cell) {
-            const float* value = emissivity.value.data() + cell * planes;
-            for (std::size_t p = 0; p < planes; ++p) {
-                sum[p] += volume[cell] * static_cast<double>(value[p]);
-            }
-        }
-    });
-    std::vector<PlaneReport> reports(planes);
-    for (std::size_t p = 0; p < planes; ++p) {
-        double sum = 0;
-        for (std::size_t layer = 0; layer < layers; ++layer) {
-            sum += sums[layer * planes + p];
-        }
-        reports[p].luminosity = 4 * constants::pi * sum * emissivity.planes[p].unit;
-    }
-    return reports;
-}
-
-namespace {
-
 /// Cells that stand for all: about one in `step`, each at another place of its stretch, so that the columns
 /// of a grid whose rows divide the step are met alike.
 std::vector<std::size_t> cells_to_sample(std::size_t cells) {

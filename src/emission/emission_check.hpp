@@ -9,9 +9,6 @@
 
 namespace aureole::emission {
 
-/// Luminosity of each plane: 4 pi x the sum of emissivity x volume over the galaxy.
-std::vector<PlaneReport> luminosities(const Emissivity& emissivity, const RunContext& context);
-
 /// Fills, for the total plane of each channel, the share missing because the spectra end and the error from
 /// the energy nodes, from the mean spectrum behind each contribution in a sample of the cells.
 ///   missing: the spectrum goes on as the power law through its last (first) two nodes for 4 decades up (down

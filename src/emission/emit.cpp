@@ -4,6 +4,7 @@
 #include "products.hpp"
 #include "synchrotron_cells.hpp"
 
+#include "aureole/base/constants.hpp"
 #include "aureole/base/parallel.hpp"
 #include "aureole/base/pool.hpp"
 #include "aureole/base/progress.hpp"
@@ -269,8 +270,8 @@ void add_products(
     }
 }
 
-/// Fills the cells that stored cells first .. first + count - 1 stand for. Returns how many spectra fell back
-/// to straight lines.
+/// Fills the cells that stored cells first .. first + count - 1 stand for and adds emissivity x volume to
+/// luminosity [plane]. Returns how many spectra fell back to straight lines.
 std::size_t emit_block(const Run& run,
                        const media::Media& media,
                        const Orientation& orientation,
@@ -278,7 +279,8 @@ std::size_t emit_block(const Run& run,
                        std::size_t count,
                        bool portable,
                        Scratch& scratch,
-                       Emissivity& field) {
+                       Emissivity& field,
+                       double* luminosity) {
     std::size_t fallback_cells = 0;
     if (run.uses_protons) {
         scratch.protons.read(*run.protons, scratch.proton_reader, run.proton_set(), first, count, portable);
@@ -311,9 +313,26 @@ std::size_t emit_block(const Run& run,
                                     *run.electrons->basis, scratch.electrons.negative_of(c), run.layout.radio,
                                     out, stokes == 0 ? nullptr : out + stokes, portable);
                             }
+                            const double volume = grid::cell_volume(field.cells, i, j, k);
+                            for (std::size_t p = 0; p < planes; ++p) {
+                                luminosity[p] += volume * static_cast<double>(out[p]);
+                            }
                         });
     }
     return fallback_cells;
+}
+
+/// From the sums of emissivity x volume of all blocks, [block][plane].
+std::vector<PlaneReport> luminosities(const std::vector<Plane>& planes, const std::vector<double>& sums) {
+    std::vector<PlaneReport> reports(planes.size());
+    for (std::size_t p = 0; p < planes.size(); ++p) {
+        double sum = 0;
+        for (std::size_t place = p; place < sums.size(); place += planes.size()) {
+            sum += sums[place];
+        }
+        reports[p].luminosity = 4 * constants::pi * sum * planes[p].unit;
+    }
+    return reports;
 }
 
 } // namespace
@@ -339,6 +358,7 @@ Emitted emit(const grid::Grid& grid,
     const std::size_t stored = grid.stored_cells();
     const std::size_t blocks = (stored + block_cells - 1) / block_cells;
     std::vector<std::size_t> fallback_cells(blocks, 0);
+    std::vector<double> sums(blocks * field.planes.size(), 0.0); // emissivity x volume
     Pool<Scratch> scratch_pool([&] { return run.scratch(); });
     Progress progress(context, "emission", blocks);
     for_each_block(context, blocks, [&](std::size_t block) {
@@ -346,7 +366,7 @@ Emitted emit(const grid::Grid& grid,
         scratch_pool.with([&](Scratch& scratch) {
             fallback_cells[block] =
                 emit_block(run, media, orientation, first, std::min(block_cells, stored - first),
-                           context.reproducible, scratch, field);
+                           context.reproducible, scratch, field, sums.data() + block * field.planes.size());
         });
         progress.step();
     });
@@ -359,7 +379,7 @@ Emitted emit(const grid::Grid& grid,
     for (const std::size_t n : fallback_cells) {
         result.report.cells_with_fallback += n;
     }
-    result.report.planes = luminosities(field, context);
+    result.report.planes = luminosities(field.planes, sums);
     if (alike == nullptr) {
         result.report.share_below_gamma_10 = check_spectra(result.report.planes, grid, media, run.plan,
                                                            {&run.electron_set(), &run.proton_set()}, sources,

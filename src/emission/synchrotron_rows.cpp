@@ -16,7 +16,7 @@ namespace aureole::emission {
 namespace {
 
 constexpr int coarse_intervals = 12;
-constexpr int fine_per_coarse = 8;
+constexpr int fine_per_coarse = 6;
 
 /// Orders of the table: close together near 1, where the tail of the kernel changes fastest.
 std::vector<double> table_orders(int intervals) {

@@ -85,7 +85,7 @@ double tail_weight(const spectra::Basis& basis,
                    double slope,
                    bool above,
                    double decades) {
-    const auto rule = gauss_legendre(8);
+    const auto rule = gauss_legendre(4);
     const double end = std::log(above ? basis.energy().back() : basis.energy().front());
     const double reach = decades * std::log(10.0);
     const double step = std::log(10.0) / 4;

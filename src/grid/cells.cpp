@@ -1,5 +1,7 @@
 #include "aureole/grid/cells.hpp"
 
+#include "aureole/base/constants.hpp"
+
 namespace aureole::grid {
 
 Cells whole_galaxy(const Grid& stored, std::size_t sectors) {
@@ -16,15 +18,23 @@ Cells whole_galaxy(const Grid& stored, std::size_t sectors) {
     return cells;
 }
 
+double cell_volume(const Cells& cells, std::size_t i, std::size_t j, std::size_t k) {
+    const auto& x = cells.stored.x;
+    const double height = cells.z[k + 1] - cells.z[k];
+    if (cells.stored.geometry == Geometry::rz) {
+        return constants::pi * (x[i + 1] - x[i]) * (x[i + 1] + x[i]) * height /
+               static_cast<double>(cells.sectors);
+    }
+    return (x[i + 1] - x[i]) * (cells.stored.y[j + 1] - cells.stored.y[j]) * height;
+}
+
 std::vector<double> cell_volumes(const Cells& cells) {
-    const auto stored = cell_volumes(cells.stored);
-    const double share = cells.stored.geometry == Geometry::rz ? static_cast<double>(cells.sectors) : 1.0;
     std::vector<double> volume;
     volume.reserve(cells.size());
     for (std::size_t k = 0; k < cells.nz(); ++k) {
         for (std::size_t j = 0; j < cells.n2(); ++j) {
             for (std::size_t i = 0; i < cells.nx(); ++i) {
-                volume.push_back(stored[cells.stored_cell(i, j, k)] / share);
+                volume.push_back(cell_volume(cells, i, j, k));
             }
         }
     }

@@ -341,14 +341,12 @@ flux_budget(const emission::Emissivity& emissivity, const Camera& camera, const 
     const Cells& cells = emissivity.cells;
     const std::size_t planes = emissivity.planes.size();
     const bool covered = seen(camera, box_around(cells)) == Seen::inside;
-    const auto volumes = grid::cell_volumes(cells.stored);
-    const double sectors = static_cast<double>(cells.sectors);
     std::vector<FluxBudget> layers(cells.nz(), empty_budget(planes));
     for_each_block(context, cells.nz(), [&](std::size_t k) {
         for (std::size_t j = 0; j < cells.n2(); ++j) {
             for (std::size_t i = 0; i < cells.nx(); ++i) {
                 const CellIndex cell{i, j, k};
-                const double volume = volumes[cells.stored_cell(i, j, k)] / sectors;
+                const double volume = grid::cell_volume(cells, i, j, k);
                 const double outside = covered ? 0.0 : share_outside(camera, cells, cell);
                 const std::size_t index = i + cells.nx() * (j + cells.n2() * k);
                 add_cell(layers[k], emissivity.value.data() + planes * index,

@@ -96,6 +96,7 @@ struct Buffers {
     std::vector<Place> places;
     std::vector<double> children;         ///< [level][child][plane]
     std::vector<double> sum, square, ray; ///< [plane]
+    std::vector<double> limit, error;     ///< [plane] of a refined pixel
 };
 
 Buffers make_buffers(const Scene& scene) {
@@ -107,6 +108,8 @@ Buffers make_buffers(const Scene& scene) {
     buffers.sum.resize(scene.planes);
     buffers.square.resize(scene.planes);
     buffers.ray.resize(scene.planes);
+    buffers.limit.resize(scene.planes);
+    buffers.error.resize(scene.planes);
     return buffers;
 }
 
@@ -265,30 +268,58 @@ std::vector<double> peaks(const Scene& scene, const Rendered& out) {
     return peak;
 }
 
-/// Error a pixel may have.
-double allowed(const Scene& scene, const Plan& plan, std::size_t plane, double value) {
-    const double floor = scene.emissivity.planes[plane].is_signed
-                             ? std::max(scene.options.floor, floor_of_signed_planes)
-                             : scene.options.floor;
-    return scene.options.tolerance * std::max(std::abs(value), floor * plan.peak[plane]);
+double floor_of(const Scene& scene, std::size_t plane) {
+    return scene.emissivity.planes[plane].is_signed ? std::max(scene.options.floor, floor_of_signed_planes)
+                                                    : scene.options.floor;
 }
 
-/// Error of the midpoint rule for one pixel, from second differences (at the map's border: first
+/// Error a pixel may have.
+double allowed(const Scene& scene, const Plan& plan, std::size_t plane, double value) {
+    return scene.options.tolerance * std::max(std::abs(value), floor_of(scene, plane) * plan.peak[plane]);
+}
+
+/// A pixel row of one plane and its neighbours (at the map's border the row itself).
+struct PixelRow {
+    const float *below, *middle, *above;
+    std::size_t last; ///< index of the last pixel of the map's row
+    bool steps_along_x, steps_along_y;
+};
+
+/// Error of the midpoint rule for one pixel sampled once, from second differences (at the map's border: first
 /// differences). Along steps there is none, because pixels are cut at their edges.
-double
-midpoint_error(const Scene& scene, const Plan& plan, const float* plane, std::size_t i, std::size_t j) {
-    const std::size_t nx = scene.nx;
-    const auto at = [&](std::size_t column, std::size_t row) {
-        return static_cast<double>(plane[column + nx * row]);
+float midpoint_error(const PixelRow& row, std::size_t i, std::size_t left, std::size_t right) {
+    const float twice = 2 * row.middle[i];
+    const float across = row.steps_along_x ? 0.0F : std::abs(row.middle[left] + row.middle[right] - twice);
+    const float along = row.steps_along_y ? 0.0F : std::abs(row.below[i] + row.above[i] - twice);
+    return (across + along) / 24;
+}
+
+/// What a pixel may be off by, and which pixels count for the estimate of the map.
+struct Limits {
+    float relative, least, bright;
+};
+
+/// Marks the poor pixels from .. to - 1 of a row; returns the largest error of the bright ones that are not.
+float mark_row(const PixelRow& row,
+               const std::uint8_t* level,
+               const Limits& limits,
+               std::size_t from,
+               std::size_t to,
+               std::uint8_t* poor) {
+    static constexpr std::array<float, 8> per_square{
+        1.0F, 0.25F, 0.0625F, 0.015625F, 0.00390625F, 0.000976562F, 0.00024414062F, 6.1035156e-05F};
+    float largest = 0;
+    const auto mark = [&](std::size_t i, std::size_t left, std::size_t right) {
+        const float value = std::abs(row.middle[i]);
+        const float error = midpoint_error(row, i, left, right) * per_square[level[i]];
+        const bool is_poor = error > limits.relative * std::max(value, limits.least);
+        poor[i] |= static_cast<std::uint8_t>(is_poor);
+        largest = !is_poor && value > limits.bright ? std::max(largest, error) : largest;
     };
-    const double middle = at(i, j);
-    const double across = scene.steps.along_x != nullptr
-                              ? 0.0
-                              : at(i > 0 ? i - 1 : i, j) + at(i + 1 < nx ? i + 1 : i, j) - 2 * middle;
-    const double along = scene.steps.along_y != nullptr
-                             ? 0.0
-                             : at(i, j > 0 ? j - 1 : j) + at(i, j + 1 < scene.ny ? j + 1 : j) - 2 * middle;
-    return (std::abs(across) + std::abs(along)) / (24 * static_cast<double>(squares(plan.level[i + nx * j])));
+    for (std::size_t i = from; i < to; ++i) {
+        mark(i, i > 0 ? i - 1 : i, i < row.last ? i + 1 : i);
+    }
+    return largest;
 }
 
 /// Marks pixels whose even sampling is not good enough, and their neighbours; keeps the estimates of the
@@ -299,17 +330,25 @@ void mark_for_refinement(const Scene& scene, Plan& plan, const Rendered& out) {
     for_each_block(scene.context, plan.tiles.size(), [&](std::size_t tile) {
         TileResult& result = plan.tiles[tile];
         result.error.assign(scene.planes, 0.0);
+        const Range rows = tile_range(tile / scene.tiles_x, scene.ny);
+        const Range columns = tile_range(tile % scene.tiles_x, scene.nx);
         for (std::size_t p = 0; p < scene.planes; ++p) {
             const float* plane = out.value.data() + p * pixels;
-            visit_tile(scene, tile, [&](std::size_t i, std::size_t j) {
-                const double value = plane[i + scene.nx * j];
-                const double error = midpoint_error(scene, plan, plane, i, j);
-                if (error > allowed(scene, plan, p, value)) {
-                    poor[i + scene.nx * j] = 1;
-                } else if (std::abs(value) > 0.5 * plan.peak[p]) {
-                    result.error[p] = std::max(result.error[p], error);
-                }
-            });
+            const Limits limits{static_cast<float>(scene.options.tolerance),
+                                static_cast<float>(floor_of(scene, p) * plan.peak[p]),
+                                static_cast<float>(0.5 * plan.peak[p])};
+            for (std::size_t j = rows.from; j < rows.to; ++j) {
+                const float* middle = plane + scene.nx * j;
+                const PixelRow row{j > 0 ? middle - scene.nx : middle,
+                                   middle,
+                                   j + 1 < scene.ny ? middle + scene.nx : middle,
+                                   scene.nx - 1,
+                                   scene.steps.along_x != nullptr,
+                                   scene.steps.along_y != nullptr};
+                const float largest = mark_row(row, plan.level.data() + scene.nx * j, limits, columns.from,
+                                               columns.to, poor.data() + scene.nx * j);
+                result.error[p] = std::max(result.error[p], static_cast<double>(largest));
+            }
         }
     });
     plan.refine.assign(pixels, 0);
@@ -391,14 +430,15 @@ void refine_pixel(const Scene& scene,
     const std::size_t pixels = scene.nx * scene.ny;
     const std::size_t pixel = i + scene.nx * j;
     const int level = plan.level[pixel];
-    std::vector<double> limit(scene.planes);
-    std::vector<double> error(scene.planes, 0.0);
+    std::vector<double>& limit = buffers.limit;
+    std::vector<double>& error = buffers.error;
+    std::fill(error.begin(), error.end(), 0.0);
     for (std::size_t p = 0; p < scene.planes; ++p) {
         limit[p] = allowed(scene, plan, p, out.value[p * pixels + pixel]);
     }
     Refinement refinement{scene, buffers, result, limit, error};
     std::fill(buffers.sum.begin(), buffers.sum.end(), 0.0);
-    std::vector<double> value(scene.planes);
+    std::vector<double>& value = buffers.square;
     for (std::size_t s = 0; s < squares(level); ++s) {
         const Square square = square_of_pixel(i, j, level, s);
         result.rays += sample(scene, buffers, square, value.data());

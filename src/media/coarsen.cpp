@@ -1,6 +1,8 @@
+#include "aureole/base/parallel.hpp"
 #include "aureole/media/media.hpp"
 
 #include <cstddef>
+#include <functional>
 
 namespace aureole::media {
 
@@ -59,23 +61,32 @@ class Averager {
 
 } // namespace
 
-Media coarsened(const Media& media, const grid::Grid& fine) {
+Media coarsened(const Media& media, const grid::Grid& fine, const RunContext& context) {
     const Averager average(fine);
     Media coarse;
     coarse.field.parity = media.field.parity;
-    coarse.field.ordered = average.vector(media.field.ordered);
-    coarse.field.random_rms = average.scalar(media.field.random_rms);
+    std::vector<std::function<void()>> parts{
+        [&] { coarse.field.ordered = average.vector(media.field.ordered); },
+        [&] { coarse.field.random_rms = average.scalar(media.field.random_rms); },
+        [&] { coarse.turbulent_speed = average.scalar(media.turbulent_speed); },
+        [&] { coarse.turbulent_scale = average.scalar(media.turbulent_scale); },
+        [&] { coarse.velocity = average.vector(media.velocity); }};
     for (auto member : {&Gas::hi, &Gas::h2, &Gas::hii, &Gas::electrons, &Gas::temperature}) {
-        coarse.gas.*member = average.scalar(media.gas.*member);
+        parts.emplace_back([&, member] { coarse.gas.*member = average.scalar(media.gas.*member); });
     }
-    for (const Radiation& field : media.radiation) {
-        coarse.radiation.push_back({field.name, field.temperature, field.uniform_density,
-                                    average.scalar(field.energy_density), field.photon_energy,
-                                    average.scalar(field.photon_density, field.photon_energy.size())});
+    coarse.radiation.resize(media.radiation.size());
+    for (std::size_t r = 0; r < media.radiation.size(); ++r) {
+        parts.emplace_back([&, r] {
+            const Radiation& field = media.radiation[r];
+            coarse.radiation[r] = {field.name,
+                                   field.temperature,
+                                   field.uniform_density,
+                                   average.scalar(field.energy_density),
+                                   field.photon_energy,
+                                   average.scalar(field.photon_density, field.photon_energy.size())};
+        });
     }
-    coarse.turbulent_speed = average.scalar(media.turbulent_speed);
-    coarse.turbulent_scale = average.scalar(media.turbulent_scale);
-    coarse.velocity = average.vector(media.velocity);
+    for_each_block(context, parts.size(), [&](std::size_t part) { parts[part](); });
     return coarse;
 }
 

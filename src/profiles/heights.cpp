@@ -207,15 +207,21 @@ HeightResult run(const Task& task,
     return fit_height(profile, task.model, fit, cache, start);
 }
 
-/// Tasks that see the same bins through the same kernel, map by map: they share their curves.
+/// Tasks that see the same bins through the same kernel, map by map: they share their curves. Long groups are
+/// cut, so that several threads have work; the cut does not depend on their number.
 std::vector<std::vector<std::size_t>> groups_of(const std::vector<Task>& tasks, const HeightsReport& report) {
     std::map<std::tuple<int, Side, bool>, std::vector<std::size_t>> groups;
     for (std::size_t k = 0; k < tasks.size(); ++k) {
         groups[{report.profiles[tasks[k].profile].strip, tasks[k].side, tasks[k].forward}].push_back(k);
     }
     std::vector<std::vector<std::size_t>> made;
-    for (auto& [key, group] : groups) {
-        made.push_back(std::move(group));
+    constexpr std::size_t longest = 16;
+    for (const auto& [key, group] : groups) {
+        const std::size_t parts = (group.size() + longest - 1) / longest;
+        for (std::size_t part = 0; part < parts; ++part) {
+            made.emplace_back(group.begin() + static_cast<std::ptrdiff_t>(group.size() * part / parts),
+                              group.begin() + static_cast<std::ptrdiff_t>(group.size() * (part + 1) / parts));
+        }
     }
     return made;
 }

@@ -96,19 +96,23 @@ void read_averages(const Recipe& parts,
 
 } // namespace
 
-Source coarsened(const Source& source, const grid::Grid& fine) {
-    Source coarse = source;
+std::vector<Source> coarsened(const std::vector<Source>& sources, const grid::Grid& fine) {
     const auto parts = std::make_shared<const Recipe>(recipe(fine));
-    coarse.cells = parts->start.size() - 1;
-    coarse.finish = nullptr;
-    coarse.open = [parts, open = source.open, nodes = source.basis->nodes()]() -> Source::Reader {
-        const auto buffer = std::make_shared<std::vector<float>>();
-        return [parts, read_fine = open(), buffer, nodes](std::size_t first, std::size_t count,
-                                                          float* weighted, std::size_t stride) {
-            read_averages(*parts, read_fine, *buffer, nodes, first, count, weighted, stride);
+    std::vector<Source> result;
+    for (const Source& source : sources) {
+        Source coarse = source;
+        coarse.cells = parts->start.size() - 1;
+        coarse.finish = nullptr;
+        coarse.open = [parts, open = source.open, nodes = source.basis->nodes()]() -> Source::Reader {
+            const auto buffer = std::make_shared<std::vector<float>>();
+            return [parts, read_fine = open(), buffer, nodes](std::size_t first, std::size_t count,
+                                                              float* weighted, std::size_t stride) {
+                read_averages(*parts, read_fine, *buffer, nodes, first, count, weighted, stride);
+            };
         };
-    };
-    return coarse;
+        result.push_back(std::move(coarse));
+    }
+    return result;
 }
 
 } // namespace aureole::spectra

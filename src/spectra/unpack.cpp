@@ -43,14 +43,10 @@ AUREOLE_HOT bool unpack_cells(const std::uint32_t* __restrict raw,
     return bad == 0;
 }
 
-typedef float Lanes __attribute__((vector_size(64), aligned(4), may_alias));
-typedef int LaneBits __attribute__((vector_size(64)));
-
-inline __attribute__((always_inline)) const Lanes& lanes(const float* at) {
-    return *reinterpret_cast<const Lanes*>(at);
-}
-
-AUREOLE_HOT bool below_ratio(const float* node, const float* left, const float* right, std::size_t count) {
+AUREOLE_HOT bool below_ratio(const float* __restrict node,
+                             const float* __restrict left,
+                             const float* __restrict right,
+                             std::size_t count) {
     constexpr std::size_t width = 16;
     if (count < width) {
         bool below = false;
@@ -60,17 +56,17 @@ AUREOLE_HOT bool below_ratio(const float* node, const float* left, const float* 
         }
         return below;
     }
-    LaneBits below{};
-    for (std::size_t j = 0; j < count; j += width) {
-        j = j + width > count ? count - width : j; // the last ones are looked at twice
-        below |= (lanes(node + j) < lanes(left + j) * lanes(node + j - 1)) |
-                 (lanes(node + j + 1) < lanes(right + j) * lanes(node + j + 2));
+    int below = 0;
+    for (std::size_t start = 0; start < count; start += width) {
+        const std::size_t first = start + width > count ? count - width : start; // the last ones twice
+        const float* n = node + first;
+        const float* l = left + first;
+        const float* r = right + first;
+        for (int j = 0; j < static_cast<int>(width); ++j) {
+            below |= static_cast<int>(n[j] < l[j] * n[j - 1]) | static_cast<int>(n[j + 1] < r[j] * n[j + 2]);
+        }
     }
-    int any = 0;
-    for (std::size_t lane = 0; lane < width; ++lane) {
-        any |= below[lane];
-    }
-    return any != 0;
+    return below != 0;
 }
 
 AUREOLE_HOT void

@@ -130,7 +130,8 @@ TEST_CASE("a mirrored grid emits what the grid of both sides emits", "[emission]
         const auto two =
             emission::emit(both, whole, {uniform}, channels, polarised(), orientation, one_thread);
         CHECK(one.emissivity.value == two.emissivity.value);
-        CHECK(one.report.planes[0].luminosity == two.report.planes[0].luminosity);
+        CHECK(one.report.planes[0].luminosity ==
+              Approx(two.report.planes[0].luminosity).epsilon(1e-12)); // added up in another order
         const auto again =
             emission::emit(both, whole, {uniform}, channels, polarised(), orientation, one_thread, &one);
         CHECK(again.tables == one.tables);

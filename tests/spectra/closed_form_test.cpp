@@ -175,7 +175,7 @@ TEST_CASE("joining cells keeps the particles", "[spectra][coarsened][conservatio
                     false};
         }
         const auto source = closed_form(scenario, fine, Species::electrons, RunContext{});
-        const auto joined = coarsened(source, fine);
+        const auto joined = coarsened({source}, fine).front();
         const auto coarse = grid::coarsened(fine);
         REQUIRE(joined.cells == coarse.stored_cells());
         CHECK(joined.cells < source.cells);
@@ -219,7 +219,7 @@ TEST_CASE("cells joined are the means of their parts", "[spectra][coarsened]") {
             }
         };
     };
-    const auto values = read_all(coarsened(source, fine));
+    const auto values = read_all(coarsened({source}, fine).front());
     REQUIRE(values.size() == 2);
     // Volumes 2, 4, 1, 2 in each plane: (0*2 + 1*4 + 2*1 + 3*2 + (4*2 + 5*4 + 6*1 + 7*2)) / 18
     CHECK(values[0] == Approx(60.0 / 18).epsilon(3e-7));

@@ -18,7 +18,7 @@ namespace aureole::emission {
 /// are flat in u for the spectra one meets, and straight lines between the table's values suffice.
 struct SynchrotronRows {
     static constexpr double tilt = 0.75;
-    double first = 0, step = 0.02;     ///< of u
+    double first = 0, step = 0.03;     ///< of u
     std::size_t tables = 0;            ///< values of u
     std::size_t nodes = 0, stride = 0; ///< of a row, and its padded length
     std::vector<double> order;         ///< values of t, 0 .. 1, at which the kernel was integrated

@@ -41,7 +41,10 @@ struct Cells {
 /// sectors is ignored for XYZ.
 Cells whole_galaxy(const Grid& stored, std::size_t sectors);
 
-/// Volume of each cell [cm3], indexed as Cells.
+/// Volume of one cell [cm3].
+double cell_volume(const Cells& cells, std::size_t i, std::size_t j, std::size_t k);
+
+/// Of each cell, indexed as Cells.
 std::vector<double> cell_volumes(const Cells& cells);
 
 } // namespace aureole::grid

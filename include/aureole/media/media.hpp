@@ -59,6 +59,6 @@ Media load_media(const scenario::Scenario& scenario,
                  const RunContext& context);
 
 /// Averages over the cells of grid::coarsened(fine), weighted with volume.
-Media coarsened(const Media& media, const grid::Grid& fine);
+Media coarsened(const Media& media, const grid::Grid& fine, const RunContext& context = {});
 
 } // namespace aureole::media

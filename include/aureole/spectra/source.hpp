@@ -34,6 +34,6 @@ struct Source {
 
 /// Averages over 2 x 2 x 2 (2 x 2 on an RZ grid) neighbouring cells, weighted with their volumes, on
 /// grid::coarsened(fine). An odd last cell stands alone.
-Source coarsened(const Source& source, const grid::Grid& fine);
+std::vector<Source> coarsened(const std::vector<Source>& sources, const grid::Grid& fine);
 
 } // namespace aureole::spectra
