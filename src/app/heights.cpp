@@ -1,5 +1,6 @@
 #include "aureole/app/heights.hpp"
 
+#include "heights_channels.hpp"
 #include "heights_spec.hpp"
 
 #include "aureole/base/constants.hpp"
@@ -28,32 +29,44 @@ namespace {
 using files::Json;
 using maps::Image;
 
-std::vector<Image> read_all(const std::vector<std::string>& paths, const RunContext& context) {
+struct GivenMaps {
     std::vector<Image> images;
+    std::vector<std::optional<emission::Channel>> energy; ///< [images] of gamma-ray maps that tell
+};
+
+GivenMaps read_all(const std::vector<std::string>& paths, const RunContext& context) {
+    GivenMaps given;
     for (const std::string& path : paths) {
         context.check_interrupt();
-        for (Image& image : maps::read_maps(path)) {
-            images.push_back(std::move(image));
+        std::vector<Image> planes = maps::read_maps(path);
+        const bool gamma = planes.front().unit.starts_with("cm-2");
+        const auto energies = gamma ? channel_energies(path) : std::vector<emission::Channel>{};
+        for (std::size_t k = 0; k < planes.size(); ++k) {
+            given.energy.push_back(energies.size() == planes.size() ? std::optional(energies[k])
+                                                                    : std::nullopt);
+            given.images.push_back(std::move(planes[k]));
         }
     }
-    return images;
+    return given;
 }
 
-/// The frequency where it tells the maps apart, else what they are called.
-std::vector<std::string> labels_of(const std::vector<Image>& images) {
+/// The frequency or photon energy where it tells the maps apart, else what they are called.
+std::vector<std::string> labels_of(const std::vector<Image>& images,
+                                   const std::vector<std::optional<emission::Channel>>& energy) {
     const auto short_name = [](const Image& image) {
         return std::filesystem::path(image.name).filename().string();
     };
     std::vector<std::string> labels;
-    for (const Image& image : images) {
-        labels.push_back(image.frequency > 0
-                             ? emission::label({emission::Band::radio, image.frequency, image.frequency})
-                             : short_name(image));
+    for (std::size_t k = 0; k < images.size(); ++k) {
+        const double frequency = images[k].frequency;
+        labels.push_back(energy[k]       ? emission::label(*energy[k])
+                         : frequency > 0 ? emission::label({emission::Band::radio, frequency, frequency})
+                                         : short_name(images[k]));
     }
     const std::vector<std::string> first = labels;
     for (std::size_t k = 0; k < images.size(); ++k) {
         if (std::count(first.begin(), first.end(), first[k]) > 1) {
-            labels[k] += images[k].frequency > 0 ? " (" + short_name(images[k]) + ")" : "";
+            labels[k] += images[k].frequency > 0 || energy[k] ? " (" + short_name(images[k]) + ")" : "";
         }
     }
     return labels;
@@ -94,7 +107,10 @@ std::string flux_unit(const std::string& unit) {
 }
 
 /// What the maps given are; numbers as they were measured, in the common unit and beam.
-Json maps_json(const std::vector<Image>& images, const std::vector<std::string>& labels) {
+Json maps_json(const std::vector<Image>& images,
+               const std::vector<std::string>& labels,
+               const std::vector<std::optional<emission::Channel>>& energy) {
+    const auto gev = [](double value) { return Json(value / constants::gigaelectronvolt); };
     Json::Array list;
     for (std::size_t k = 0; k < images.size(); ++k) {
         const Image& image = images[k];
@@ -105,6 +121,8 @@ Json maps_json(const std::vector<Image>& images, const std::vector<std::string>&
                          {"process", "total"},
                          {"label", labels[k]},
                          {"frequency_hz", image.frequency > 0 ? Json(image.frequency) : Json()},
+                         {"energy_from_gev", energy[k] ? gev(energy[k]->from) : Json()},
+                         {"energy_to_gev", energy[k] ? gev(energy[k]->to) : Json()},
                          {"unit", image.unit},
                          {"peak", peak_of(image)},
                          {"flux", flux_of(image)},
@@ -128,6 +146,7 @@ std::vector<std::string> assumptions() {
 Json summary_json(const HeightsArguments& arguments,
                   const std::vector<Image>& images,
                   const std::vector<std::string>& labels,
+                  const std::vector<std::optional<emission::Channel>>& energy,
                   const profiles::HeightsSpec& spec,
                   const profiles::HeightsReport& report) {
     const bool gamma = images.front().unit.starts_with("cm-2");
@@ -142,7 +161,7 @@ Json summary_json(const HeightsArguments& arguments,
                               {"position_angle_deg", spec.profile.position_angle / constants::degree},
                               {"distance_kpc", spec.profile.distance / constants::kiloparsec},
                               {"distance_error_kpc", spec.profile.distance_error / constants::kiloparsec}}},
-        {"maps", maps_json(images, labels)},
+        {"maps", maps_json(images, labels, energy)},
         {band + "_heights", report::heights_json(report, labels)},
         {band + "_exponent", report::exponent_json(report)},
         {"warnings", Json::Array(report.notes.begin(), report.notes.end())},
@@ -201,7 +220,8 @@ void add_heights_options(CLI::App& app, HeightsArguments& arguments) {
 int heights(const HeightsArguments& arguments, const RunContext& context) {
     const auto beam = read_beam_option(arguments.beam);
     std::optional<files::RunFolder> folder;
-    const std::vector<Image> originals = read_all(arguments.files, context);
+    const GivenMaps given = read_all(arguments.files, context);
+    const std::vector<Image>& originals = given.images;
     if (!arguments.folder.empty()) {
         folder.emplace(arguments.folder, arguments.force);
         for (const std::string& path : arguments.files) {
@@ -218,10 +238,13 @@ int heights(const HeightsArguments& arguments, const RunContext& context) {
     } catch (const Error& error) {
         throw Error(error.kind() == ErrorKind::scenario ? ErrorKind::usage : error.kind(), error.what());
     }
+    if (images.front().unit.starts_with("cm-2")) {
+        report.exponents.clear(); // heights against frequency are a matter of radio maps
+    }
     report.notes.insert(report.notes.begin(), request.notes.begin(), request.notes.end());
     report.notes.insert(report.notes.begin(), common.notes.begin(), common.notes.end());
 
-    const auto labels = labels_of(images);
+    const auto labels = labels_of(images, given.energy);
     for (const std::string& line : report::terminal_lines(report, labels)) {
         if (!arguments.quiet) {
             fmt::print("{}\n", line);
@@ -236,8 +259,9 @@ int heights(const HeightsArguments& arguments, const RunContext& context) {
         folder->write_text("tables/heights.ecsv",
                            files::ecsv_text(report::heights_table(report, labels), meta));
         folder->write_text("tables/exponents.ecsv", files::ecsv_text(report::exponents_table(report), meta));
-        folder->write_text("summary.json",
-                           summary_json(arguments, images, labels, request.spec, report).text());
+        folder->write_text(
+            "summary.json",
+            summary_json(arguments, images, labels, given.energy, request.spec, report).text());
         folder->finish(arguments.command);
     }
     return report.chosen ? 0 : static_cast<int>(ErrorKind::accuracy);

@@ -319,15 +319,6 @@ void set_noise(const HeightsArguments& arguments,
     profile.noise = noise == "beam"      ? profiles::NoiseFrom::beam
                     : noise == "scatter" ? profiles::NoiseFrom::scatter
                                          : profiles::NoiseFrom::autocorrelation;
-    // A measured correlation is not exact, and bins well below its width ask it for differences of almost
-    // equal numbers: heights then come out wrong by many of their errors.
-    const double least = images.front().beam ? 0.9 * images.front().beam->major * profile.distance : 0;
-    if (noise == "autocorrelation" && smoothed(originals, images) && profile.bin_height < least) {
-        refuse("--bin",
-               fmt::format("found bins of {:.3g} kpc, expected {:.3g} kpc or more with --noise "
-                           "autocorrelation, as maps were smoothed to one beam",
-                           profile.bin_height / constants::kiloparsec, least / constants::kiloparsec));
-    }
     set_rms(arguments, originals, images, request);
     if (arguments.background == "measured") {
         profile.background = profiles::BackgroundFrom::measured;

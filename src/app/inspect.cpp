@@ -1,5 +1,8 @@
 #include "aureole/app/inspect.hpp"
 
+#include "inspect_emissivity.hpp"
+#include "inspect_physics.hpp"
+
 #include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/files/fits_reader.hpp"
@@ -69,7 +72,8 @@ void print_axis(const std::string& name, const std::vector<double>& values) {
                frequency ? "GHz"
                : photon  ? "eV"
                          : "GeV",
-               frequency || photon ? "" : " kinetic", static_cast<double>(values.size() - 1) / decades);
+               frequency || photon || name == "E_GAMMA" ? "" : " kinetic",
+               static_cast<double>(values.size() - 1) / decades);
 }
 
 void print_grid_header(const grid::GridFile& file) {
@@ -98,8 +102,15 @@ void print_ranges(const grid::GridFile& file, const grid::GridFileContents& cont
             data.compressed ? " compressed" : "", range.least, range.greatest, range.unit,
             range.total_text.empty() ? "" : fmt::format("; in all {:.4g} {}", range.total, range.total_text));
     }
-    for (const std::string& warning : contents.warnings) {
-        print_marked("warning", warning);
+}
+
+/// Field and pressures of a file whose values are all in order.
+PhysicsFindings physics_of(const grid::GridFile& file, std::vector<std::string>& problems) {
+    try {
+        return problems.empty() ? examine_physics(file) : PhysicsFindings{};
+    } catch (const Error& error) {
+        problems.emplace_back(error.what());
+        return {};
     }
 }
 
@@ -112,14 +123,28 @@ int inspect_grid(const std::string& path, bool quiet) {
         return verdict(count_lines(error.what()), error.kind(), quiet);
     }
     const auto contents = grid::examine(file);
+    const auto emissivities = examine_emissivities(file, contents.warnings);
+    std::vector<std::string> problems = contents.problems;
+    problems.insert(problems.end(), emissivities.problems.begin(), emissivities.problems.end());
+    const auto physics = physics_of(file, problems);
     if (!quiet) {
         print_grid_header(file);
         print_ranges(file, contents);
+        for (const auto* lines : {&emissivities.lines, &physics.lines}) {
+            for (const std::string& line : *lines) {
+                fmt::print("  {}\n", line);
+            }
+        }
+        for (const auto* warnings : {&emissivities.warnings, &physics.warnings}) {
+            for (const std::string& warning : *warnings) {
+                print_marked("warning", warning);
+            }
+        }
     }
-    for (const std::string& problem : contents.problems) {
+    for (const std::string& problem : problems) {
         print_marked("problem", problem);
     }
-    return verdict(static_cast<int>(contents.problems.size()), ErrorKind::input, quiet);
+    return verdict(static_cast<int>(problems.size()), ErrorKind::input, quiet);
 }
 
 /// What the pixels of an image HDU hold.

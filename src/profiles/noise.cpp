@@ -3,11 +3,13 @@
 #include "aureole/base/error.hpp"
 #include "aureole/base/quadrature.hpp"
 
+#include <Eigen/Eigenvalues>
 #include <fmt/format.h>
 
 #include <algorithm>
 #include <array>
 #include <cmath>
+#include <complex>
 #include <numbers>
 
 namespace aureole::profiles {
@@ -151,6 +153,84 @@ double clip_rms(std::vector<double> values, double& level, std::size_t& used) {
     return rms;
 }
 
+/// 1 up to half the reach, then half a cosine down to 0 at the reach. `part`: lag over the reach.
+double flat_taper(double part) {
+    const double beyond = std::clamp(2 * part - 1, 0.0, 1.0);
+    return 0.5 * (1 + std::cos(std::numbers::pi * beyond));
+}
+
+/// exp(-2 pi i k d/period), d from -reach to reach against k.
+Eigen::MatrixXcd waves(std::ptrdiff_t period, std::ptrdiff_t reach) {
+    Eigen::MatrixXcd table(period, 2 * reach + 1);
+    for (std::ptrdiff_t k = 0; k < period; ++k) {
+        for (std::ptrdiff_t d = -reach; d <= reach; ++d) {
+            const double turns = static_cast<double>(k * d % period) / static_cast<double>(period);
+            table(k, d + reach) = std::polar(1.0, -2 * std::numbers::pi * turns);
+        }
+    }
+    return table;
+}
+
+/// Kernel whose power spectrum is the one of the lags, 0 where that is negative, cut at half the reach.
+Eigen::MatrixXd kernel_of(const LagTable& raw) {
+    const std::ptrdiff_t columns = 2 * raw.reach_x + 1;
+    const std::ptrdiff_t rows = 2 * raw.reach_y + 1;
+    Eigen::MatrixXcd lags(rows, columns);
+    for (std::ptrdiff_t j = 0; j < rows; ++j) {
+        for (std::ptrdiff_t i = 0; i < columns; ++i) {
+            lags(j, i) = raw.value[static_cast<std::size_t>(j * columns + i)];
+        }
+    }
+    const std::ptrdiff_t period_x = 2 * columns;
+    const std::ptrdiff_t period_y = 2 * rows;
+    // The lags are symmetric about 0, hence their spectrum is real.
+    const Eigen::MatrixXcd spectrum =
+        waves(period_y, raw.reach_y) * lags * waves(period_x, raw.reach_x).transpose();
+    const Eigen::MatrixXcd amplitude = spectrum.real().cwiseMax(0.0).cwiseSqrt().cast<std::complex<double>>();
+    return (waves(period_y, raw.reach_y / 2).adjoint() * amplitude *
+            waves(period_x, raw.reach_x / 2).conjugate())
+        .real();
+}
+
+/// The kernel of the lags folded with itself: no covariance made of it has a negative eigenvalue.
+LagTable semidefinite(const LagTable& raw) {
+    const Eigen::MatrixXd kernel = kernel_of(raw);
+    LagTable table = raw;
+    const double square = kernel.squaredNorm();
+    for (std::ptrdiff_t dj = -raw.reach_y; dj <= raw.reach_y; ++dj) {
+        for (std::ptrdiff_t di = -raw.reach_x; di <= raw.reach_x; ++di) {
+            const std::ptrdiff_t height = kernel.rows() - std::abs(dj);
+            const std::ptrdiff_t width = kernel.cols() - std::abs(di);
+            const auto here = kernel.block(std::max<std::ptrdiff_t>(0, -dj), std::max<std::ptrdiff_t>(0, -di),
+                                           height, width);
+            const auto there =
+                kernel.block(std::max<std::ptrdiff_t>(0, dj), std::max<std::ptrdiff_t>(0, di), height, width);
+            const std::ptrdiff_t place = (dj + raw.reach_y) * (2 * raw.reach_x + 1) + di + raw.reach_x;
+            table.value[static_cast<std::size_t>(place)] =
+                square > 0 ? here.cwiseProduct(there).sum() / square : 0;
+        }
+    }
+    return table;
+}
+
+/// Lifts eigenvalues to `least` of the greatest. Rows of zeros stay so.
+void raise_eigenvalues(Eigen::MatrixXd& covariance, double least) {
+    std::vector<Eigen::Index> filled;
+    for (Eigen::Index b = 0; b < covariance.rows(); ++b) {
+        if (covariance(b, b) > 0) {
+            filled.push_back(b);
+        }
+    }
+    if (filled.empty()) {
+        return;
+    }
+    const Eigen::MatrixXd part = covariance(filled, filled);
+    const Eigen::SelfAdjointEigenSolver<Eigen::MatrixXd> eigen(part);
+    const Eigen::VectorXd values = eigen.eigenvalues().cwiseMax(least * eigen.eigenvalues().maxCoeff());
+    covariance(filled, filled) =
+        eigen.eigenvectors() * values.asDiagonal() * eigen.eigenvectors().transpose();
+}
+
 } // namespace
 
 LagTable beam_correlation(const maps::PixelGrid& pixels, const maps::Beam& beam) {
@@ -226,20 +306,24 @@ LagTable measured_correlation(const maps::Image& image,
     const auto nx = static_cast<std::ptrdiff_t>(image.pixels.nx);
     const auto ny = static_cast<std::ptrdiff_t>(image.pixels.ny);
     const double reach = image.beam ? 3 * image.beam->major : 0;
+    // Even, as the kernel behind the correlation has half the reach.
     const auto reach_of = [&](double step, std::ptrdiff_t size) {
-        const auto wanted = reach > 0 ? static_cast<std::ptrdiff_t>(std::ceil(reach / std::abs(step))) : 10;
-        return std::min(wanted, size - 1);
+        const auto half =
+            reach > 0 ? static_cast<std::ptrdiff_t>(std::ceil(0.5 * reach / std::abs(step))) : 5;
+        return 2 * std::min(half, (size - 1) / 2);
     };
-    LagTable table;
-    table.reach_x = reach_of(image.pixels.step_x, nx);
-    table.reach_y = reach_of(image.pixels.step_y, ny);
+    LagTable raw;
+    raw.reach_x = reach_of(image.pixels.step_x, nx);
+    raw.reach_y = reach_of(image.pixels.step_y, ny);
     std::vector<double> value(image.value.size(), 0.0);
     std::vector<double> used(image.value.size(), 0.0);
+    double pixels = 0;
     for (std::size_t k = 0; k < value.size(); ++k) {
         const double departure = static_cast<double>(image.value[k]) - noise.level;
         if (source_free[k] != 0 && std::abs(departure) <= 5 * noise.rms) {
             value[k] = departure;
             used[k] = 1;
+            pixels += 1;
         }
     }
     const auto covariance = [&](std::ptrdiff_t di, std::ptrdiff_t dj) {
@@ -255,18 +339,27 @@ LagTable measured_correlation(const maps::Image& image,
         }
         return pairs > 0 ? sum / pairs : 0.0;
     };
-    const std::ptrdiff_t row = 2 * table.reach_x + 1;
-    table.value.assign(static_cast<std::size_t>(row * (2 * table.reach_y + 1)), 0.0);
+    const std::ptrdiff_t row = 2 * raw.reach_x + 1;
+    raw.value.assign(static_cast<std::size_t>(row * (2 * raw.reach_y + 1)), 0.0);
     const double variance = covariance(0, 0);
-    for (std::ptrdiff_t dj = 0; dj <= table.reach_y; ++dj) {
-        for (std::ptrdiff_t di = -table.reach_x; di <= table.reach_x; ++di) {
-            const double correlation = variance > 0 ? covariance(di, dj) / variance : 0;
-            table.value[static_cast<std::size_t>((table.reach_y + dj) * row + table.reach_x + di)] =
-                correlation;
-            table.value[static_cast<std::size_t>((table.reach_y - dj) * row + table.reach_x - di)] =
-                correlation;
+    const double step_x = reach > 0 ? std::abs(image.pixels.step_x) / reach : 0.1;
+    const double step_y = reach > 0 ? std::abs(image.pixels.step_y) / reach : 0.1;
+    for (std::ptrdiff_t dj = 0; dj <= raw.reach_y; ++dj) {
+        for (std::ptrdiff_t di = -raw.reach_x; di <= raw.reach_x; ++di) {
+            const double kept =
+                flat_taper(std::hypot(step_x * static_cast<double>(di), step_y * static_cast<double>(dj)));
+            const double correlation = variance > 0 && kept > 0 ? covariance(di, dj) / variance : 0;
+            const double tapered = kept * std::clamp(correlation, -1.0, 1.0);
+            raw.value[static_cast<std::size_t>((raw.reach_y + dj) * row + raw.reach_x + di)] = tapered;
+            raw.value[static_cast<std::size_t>((raw.reach_y - dj) * row + raw.reach_x - di)] = tapered;
         }
     }
+    LagTable table = semidefinite(raw);
+    double squares = 0;
+    for (const double correlation : table.value) {
+        squares += correlation * correlation;
+    }
+    table.least_eigenvalue = pixels > 0 ? std::min(1.0, 2 * squares / pixels) : 0;
     return table;
 }
 
@@ -296,6 +389,9 @@ Eigen::MatrixXd unit_covariance(const maps::PixelGrid& pixels,
                 covariance(a, b) = covariance(b, a) = dot(other, nx, window, field);
             }
         }
+    }
+    if (correlation.least_eigenvalue > 0) {
+        raise_eigenvalues(covariance, correlation.least_eigenvalue);
     }
     return covariance;
 }

@@ -132,6 +132,91 @@ class Heights(unittest.TestCase):
         profile = self.rows(out, "profiles")
         self.assertEqual(set(profile["unit"]), {"Jy/beam"})
 
+    def test_smoothed_maps_with_a_measured_correlation_give_both_heights(self):
+        for bins in ([], ["--bin", "0.25 kpc"]):
+            out = self.folder / f"measured{len(bins)}"
+            result = run(self.low, self.high, "-o", out, *OPTIONS, *WIDE, *bins, "--noise", "autocorrelation")
+            self.assertEqual(result.returncode, 0, result.stderr)
+            by_beam = self.folder / f"by_beam{len(bins)}"
+            self.assertEqual(run(self.low, self.high, "-o", by_beam, *OPTIONS, *WIDE, *bins).returncode, 0)
+            for row, other in zip(self.rows(out), self.rows(by_beam)):
+                truth = 1.8 if row["frequency"] < 1e9 else 1.2
+                self.assertEqual(row["status"], "ok")
+                self.assertLess(abs(row["h"] - truth), 4 * row["error_noise"] + 0.003, f"{row['frequency']}: {row['h']}")
+                self.assertLess(abs(np.log(row["error_noise"] / other["error_noise"])), np.log(1.3))
+
+    def gamma_cube(self, name, axis, tables=(), unit="cm-2 s-1 sr-1 MeV-1", planes=2):
+        size, step, beam = 150, 8.0, 32.0
+        head = header(size, step, beam, 1e9)
+        for key in (f"{k}{n}" for n in (3, 4) for k in ("CTYPE", "CRVAL", "CRPIX", "CDELT", "CUNIT")):
+            head.remove(key, ignore_missing=True)
+        head["BUNIT"] = unit
+        head.update(axis)
+        place = (np.indices((size, size)) - (size / 2 - 1)) * step * ARCSEC / KPC
+        east, north = -place[1], place[0]
+        s, c = np.sin(np.radians(POSITION_ANGLE)), np.cos(np.radians(POSITION_ANGLE))
+        along, height = east * s + north * c, east * c - north * s
+        rng = np.random.default_rng(3)
+        sigma = beam * ARCSEC / KPC / 2.3548
+        cube = [layer(height, along, 1.5 + 0.3 * k, sigma) + 0.002 * smooth_noise((size, size), beam / step / 2.3548, rng)
+                for k in range(planes)]
+        path = self.folder / name
+        fits.HDUList([fits.PrimaryHDU(np.array(cube, "f4") * 1e-9, head), *tables]).writeto(path)
+        return path
+
+    def check_labels(self, path, expected, energies=None):
+        out = self.folder / (path.name + ".out")
+        result = run(path, "-o", out, *OPTIONS, *WIDE)
+        self.assertEqual(result.returncode, 0, result.stdout + result.stderr)
+        self.assertEqual(list(dict.fromkeys(self.rows(out)["map"])), expected)
+        self.assertEqual(list(dict.fromkeys(self.rows(out, "profiles")["map"])), expected)
+        summary = json.loads((out / "summary.json").read_text())
+        self.assertEqual([row["map"] for row in summary["gamma_heights"]], expected)
+        self.assertEqual([row["label"] for row in summary["maps"]], expected)
+        self.assertNotIn("no exponent", result.stdout)
+        self.assertIsNone(summary["gamma_exponent"])
+        for label in expected:
+            self.assertIn(f"\n{label}  ", result.stdout)
+        for channel, label in enumerate(expected):  # the heights that gamma_cube gives its planes
+            row = next(row for row in summary["gamma_heights"] if row["map"] == label)
+            self.assertLess(abs(row["h_kpc"] - (1.5 + 0.3 * channel)), 4 * row["error_noise_kpc"] + 0.003, label)
+        for row, (low, high) in zip(summary["maps"], energies or []):
+            self.assertAlmostEqual(row["energy_from_gev"] / low, 1, places=10)
+            self.assertAlmostEqual(row["energy_to_gev"] / high, 1, places=10)
+        return summary
+
+    def test_gamma_ray_channels_are_called_by_their_photon_energies(self):
+        linear = {"CTYPE3": "ENERGY", "CRVAL3": 2.0, "CRPIX3": 1.0, "CDELT3": 1.5, "CUNIT3": "GeV"}
+        self.check_labels(self.gamma_cube("linear.fits", linear), ["2 GeV", "3.5 GeV"], [(2, 2), (3.5, 3.5)])
+        log = {"CTYPE3": "ENER-LOG", "CRVAL3": 500.0, "CRPIX3": 1.0, "CDELT3": 500 * np.log(10), "CUNIT3": "MeV"}
+        self.check_labels(self.gamma_cube("log.fits", log), ["500 MeV", "5 GeV"], [(0.5, 0.5), (5, 5)])
+        band = {"CTYPE3": "ENERBAND", "CRVAL3": 1.0, "CRPIX3": 1.0, "CDELT3": 1.0, "BANDSHDU": "EBOUNDS"}
+        columns = [fits.Column("CHANNEL", "J", array=[0, 1]), fits.Column("E_MIN", "D", "keV", array=[1e6, 1e7]),
+                   fits.Column("E_MAX", "E", "keV", array=[1e7, 2e9])]
+        bounds = fits.BinTableHDU.from_columns(columns, name="EBOUNDS")
+        other = fits.ImageHDU(np.zeros((30, 41), "f4"), name="OTHER")  # something to step over
+        cube = self.gamma_cube("bands.fits", band, [other, bounds], unit="cm-2 s-1 sr-1")
+        self.check_labels(cube, ["1 GeV - 10 GeV", "10 GeV - 2 TeV"], [(1, 10), (10, 2000)])
+
+    def test_a_table_goes_before_the_axis_where_it_has_a_row_for_every_plane(self):
+        axis = {"CTYPE3": "ENERGY", "CRVAL3": 2.0, "CRPIX3": 1.0, "CDELT3": 1.5, "CUNIT3": "GeV"}
+        for name, values, expected in (("both.fits", [3e3, 7e3], ["3 GeV", "7 GeV"]), ("three.fits", [1.0, 2.0, 3.0], ["2 GeV", "3.5 GeV"])):
+            table = fits.BinTableHDU.from_columns([fits.Column("ENERGY", "D", "MeV", array=values)], name="ENERGIES")
+            self.check_labels(self.gamma_cube(name, axis, [table]), expected)
+
+    def test_gamma_ray_channels_without_a_unit_keep_their_number(self):
+        bare = {"CTYPE3": "ENERGY", "CRVAL3": 2.0, "CRPIX3": 1.0, "CDELT3": 1.5}
+        summary = self.check_labels(self.gamma_cube("bare.fits", bare), ["bare.fits, channel 1", "bare.fits, channel 2"])
+        self.assertIsNone(summary["maps"][0]["energy_from_gev"])
+
+    def test_two_maps_of_one_photon_energy_are_told_apart_by_their_files(self):
+        axis = {"CTYPE3": "ENERGY", "CRVAL3": 2.0, "CRPIX3": 1.0, "CDELT3": 1.5, "CUNIT3": "GeV"}
+        first, second = self.gamma_cube("a.fits", axis, planes=1), self.gamma_cube("b.fits", axis, planes=1)
+        result = run(first, second, *OPTIONS, *WIDE)
+        self.assertEqual(result.returncode, 0, result.stderr)
+        self.assertIn("2 GeV (a.fits)", result.stdout)
+        self.assertIn("2 GeV (b.fits)", result.stdout)
+
     def test_a_masked_source_does_not_change_the_height(self):
         data, head = fits.getdata(self.high), fits.getheader(self.high)
         spoilt = data.copy()
@@ -164,7 +249,6 @@ class Heights(unittest.TestCase):
         self.check_refused(2, ["--rms"], self.low, *OPTIONS, *WIDE, "--rms", "3 kpc")
         self.check_refused(2, ["--rms", "3 values"], self.low, *OPTIONS, *WIDE, *("--rms", "0") * 3)
         self.check_refused(2, ["--noise"], self.low, *OPTIONS, *WIDE, "--noise", "loud")
-        self.check_refused(2, ["--bin"], self.low, self.high, *OPTIONS, *WIDE, "--noise", "autocorrelation")
         self.check_refused(2, ["MAP"], "--distance", "10 Mpc")
 
     def test_unusable_maps_are_input_errors_naming_file_and_keyword(self):
