@@ -94,11 +94,10 @@ scenario::Scenario scenario_of(const std::string& grid, const std::vector<std::s
 /// The maps of a run, in memory.
 class Run {
   public:
-    explicit Run(const scenario::Scenario& scenario) {
+    explicit Run(const scenario::Scenario& scenario, RunContext context = {}) {
         std::string pattern = (std::filesystem::temp_directory_path() / "aureole_test_XXXXXX").string();
         REQUIRE(mkdtemp(pattern.data()) != nullptr);
         folder_ = pattern;
-        RunContext context;
         context.threads = 2;
         result = app::predict(scenario, {folder_ / "results", false, "test"}, context);
     }
@@ -173,7 +172,14 @@ TEST_CASE("the plan counts cells, planes and memory, and the memory limit is hel
     const auto held = app::plan(scenario_of(rings, {"electrons.height_slope=-0.2"}), context);
     CHECK(held.total_bytes - plan.total_bytes == 24 * 4 * plan.stored_cells);
 
+    CHECK(plan.passes == 1);
     context.memory_limit = plan.total_bytes - 1;
+    const auto tight = app::plan(scenario_of(rings), context);
+    CHECK(tight.passes == 2);
+    CHECK(tight.total_bytes <= context.memory_limit);
+
+    // A single channel of 144 MHz, with Q and U, is the least that can be held.
+    context.memory_limit = plan.total_bytes - 4 * 4 * plan.cells - 1;
     try {
         app::predict(scenario_of(rings),
                      {std::filesystem::temp_directory_path() / "aureole_never", false, ""}, context);
@@ -183,6 +189,22 @@ TEST_CASE("the plan counts cells, planes and memory, and the memory limit is hel
         CHECK_THAT(error.what(), Catch::Matchers::Contains("--memory"));
     }
     CHECK_FALSE(std::filesystem::exists(std::filesystem::temp_directory_path() / "aureole_never"));
+}
+
+TEST_CASE("channels in several passes give the maps of one within the tolerance", "[app][plan]") {
+    const auto scenario = scenario_of(rings, {"map.separate=true"});
+    RunContext context;
+    context.threads = 2;
+    const auto whole = app::plan(scenario, context);
+    const Run one(scenario);
+    context.memory_limit = whole.total_bytes - whole.emissivity_bytes / 2;
+    REQUIRE(app::plan(scenario, context).passes > 1);
+    const Run several(scenario, context);
+    CHECK(several.result.files == one.result.files);
+    for (const auto& name : all_maps) {
+        INFO(name);
+        CHECK(difference(one, several, name) < 2e-3);
+    }
 }
 
 TEST_CASE("a run warns of what emits nothing", "[app][predict]") {

@@ -22,7 +22,9 @@ struct Plan {
     std::size_t planes = 0;
     std::size_t pixels_x = 0, pixels_y = 0;
     double pixel_arcsec = 0;
-    std::size_t emissivity_bytes = 0, total_bytes = 0;
+    std::size_t emissivity_bytes = 0, total_bytes = 0; ///< the emissivity of one pass
+    std::size_t room_for_emissivity = 0;               ///< bytes
+    std::size_t passes = 1; ///< the spectra are read so many times, for a part of the channels each
     double seconds = 0;
     std::vector<std::string> files;         ///< that would be written, relative to the folder
     std::vector<std::string> lines() const; ///< for the terminal
