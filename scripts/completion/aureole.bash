@@ -6,7 +6,7 @@ _aureole() {
     COMPREPLY=()
     for ((i = 1; i < COMP_CWORD; i++)); do
         case ${COMP_WORDS[i]} in
-        predict | scenario | inspect | heights)
+        predict | scenario | laws | inspect | heights)
             verb=${COMP_WORDS[i]}
             break
             ;;
@@ -17,7 +17,7 @@ _aureole() {
     local options
     case $verb in
     predict) options="--output --set --force --dry-run $compute $talk" ;;
-    scenario) options='--help' ;;
+    scenario | laws) options='--help' ;;
     inspect) options="$talk" ;;
     heights)
         options="--output --force --centre --center --position-angle --inclination --distance --distance-error
@@ -73,12 +73,12 @@ _aureole() {
         return
     fi
     case $verb in
-    '') COMPREPLY=($(compgen -W 'predict scenario inspect heights' -- "$word")) ;;
-    scenario)
-        # The starters the installed program has: the first word of each line.
-        local starters
-        starters=$("${COMP_WORDS[0]}" scenario 2>/dev/null | cut -d' ' -f1)
-        COMPREPLY=($(compgen -W "$starters" -- "$word"))
+    '') COMPREPLY=($(compgen -W 'predict scenario laws inspect heights' -- "$word")) ;;
+    scenario | laws)
+        # The names the installed program has: the first word of each line.
+        local names
+        names=$("${COMP_WORDS[0]}" "$verb" 2>/dev/null | cut -d' ' -f1)
+        COMPREPLY=($(compgen -W "$names" -- "$word"))
         ;;
     *)
         # Folders to go on into, and the files that fit the verb. Names with blanks stay whole.

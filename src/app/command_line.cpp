@@ -2,9 +2,11 @@
 
 #include "interrupt.hpp"
 #include "terminal.hpp"
+#include "wrapped.hpp"
 
 #include "aureole/app/heights.hpp"
 #include "aureole/app/inspect.hpp"
+#include "aureole/app/laws.hpp"
 #include "aureole/app/predict.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/scenario/scenario.hpp"
@@ -18,7 +20,6 @@
 #include <exception>
 #include <iostream>
 #include <new>
-#include <sstream>
 #include <thread>
 
 namespace aureole::app {
@@ -109,26 +110,6 @@ void print_lines(const std::vector<std::string>& lines) {
     std::fflush(stdout);
 }
 
-/// The text with lines of 80 columns at most: what is longer goes on below where its last column starts.
-std::string wrapped(const std::string& text, std::size_t column) {
-    constexpr std::size_t width = 80;
-    std::string result;
-    std::istringstream lines(text);
-    for (std::string line; std::getline(lines, line);) {
-        const std::size_t indent = line.starts_with(' ') ? column : 0;
-        while (line.size() > width) {
-            const std::size_t blank = line.rfind(' ', width);
-            if (blank == std::string::npos || blank <= indent) {
-                break;
-            }
-            result += line.substr(0, blank) + '\n';
-            line = std::string(indent, ' ') + line.substr(blank + 1);
-        }
-        result += line + '\n';
-    }
-    return result;
-}
-
 int run_predict(const Arguments& arguments, const std::string& command, const RunContext& context) {
     const auto scenario = scenario::load(arguments.scenario_file, arguments.overrides);
     if (arguments.dry_run) {
@@ -200,6 +181,9 @@ int run(int argc, char** argv) {
         app.add_subcommand("scenario", "Print a complete starter scenario, or the list of them");
     scenario_verb->add_option("NAME", arguments.name, "Name of a starter scenario");
 
+    auto* laws_verb = app.add_subcommand("laws", "Print the list of scattering laws, or all about one");
+    laws_verb->add_option("NAME", arguments.name, "Name of a law of the list");
+
     auto* inspect_verb =
         app.add_subcommand("inspect", "What a grid file, scenario or map holds, and every problem in it");
     inspect_verb->add_option("FILE", arguments.file, "File to look at")->required();
@@ -233,6 +217,8 @@ int run(int argc, char** argv) {
             code = run_predict(arguments, command, context);
         } else if (scenario_verb->parsed()) {
             code = run_scenario(arguments);
+        } else if (laws_verb->parsed()) {
+            code = laws(arguments.name);
         } else if (inspect_verb->parsed()) {
             code = inspect(arguments.file, arguments.common.quiet, context);
         } else {

@@ -84,19 +84,6 @@ std::string channels_table(const std::vector<MapProduct>& products, const std::s
         {{"scenario_hash", hash}});
 }
 
-/// Appends the rows of the second table to the first; both have the same columns.
-std::vector<EcsvColumn> stacked(std::vector<EcsvColumn> first, const std::vector<EcsvColumn>& second) {
-    for (std::size_t c = 0; c < first.size(); ++c) {
-        std::visit(
-            [&](auto& values) {
-                const auto& more = std::get<std::decay_t<decltype(values)>>(second[c].values);
-                values.insert(values.end(), more.begin(), more.end());
-            },
-            first[c].values);
-    }
-    return first;
-}
-
 struct HeightTables {
     std::vector<EcsvColumn> profiles, heights, exponents;
 };
@@ -182,6 +169,24 @@ Json summary_json(const scenario::Scenario& scenario,
 
 } // namespace
 
+/// Appends the rows of the second table to the first; both have the same columns.
+std::vector<EcsvColumn> stacked(std::vector<EcsvColumn> first, const std::vector<EcsvColumn>& second) {
+    for (std::size_t c = 0; c < first.size(); ++c) {
+        std::visit(
+            [&](auto& values) {
+                const auto& more = std::get<std::decay_t<decltype(values)>>(second[c].values);
+                values.insert(values.end(), more.begin(), more.end());
+            },
+            first[c].values);
+    }
+    return first;
+}
+
+std::vector<EcsvColumn> heights_columns(const PredictedHeights& heights) {
+    auto tables = height_tables(heights);
+    return tables ? std::move(tables->heights) : std::vector<EcsvColumn>{};
+}
+
 std::vector<std::string> left_out() {
     return {
         "Faraday rotation and depolarisation, thermal emission, absorption of any kind",
@@ -196,6 +201,7 @@ std::vector<std::string> left_out() {
 }
 
 void write_tables(files::RunFolder& folder,
+                  const std::string& prefix,
                   const scenario::Scenario& scenario,
                   const MapSettings& settings,
                   const std::vector<MapProduct>& products,
@@ -203,14 +209,14 @@ void write_tables(files::RunFolder& folder,
                   const std::vector<std::string>& warnings,
                   const std::string& hash,
                   const std::string& command) {
-    folder.write_text("tables/channels.ecsv", channels_table(products, hash));
+    folder.write_text(prefix + "tables/channels.ecsv", channels_table(products, hash));
     if (const auto tables = height_tables(heights)) {
         const std::vector<std::pair<std::string, std::string>> meta{{"scenario_hash", hash}};
-        folder.write_text("tables/profiles.ecsv", files::ecsv_text(tables->profiles, meta));
-        folder.write_text("tables/heights.ecsv", files::ecsv_text(tables->heights, meta));
-        folder.write_text("tables/exponents.ecsv", files::ecsv_text(tables->exponents, meta));
+        folder.write_text(prefix + "tables/profiles.ecsv", files::ecsv_text(tables->profiles, meta));
+        folder.write_text(prefix + "tables/heights.ecsv", files::ecsv_text(tables->heights, meta));
+        folder.write_text(prefix + "tables/exponents.ecsv", files::ecsv_text(tables->exponents, meta));
     }
-    folder.write_text("summary.json",
+    folder.write_text(prefix + "summary.json",
                       summary_json(scenario, settings, products, heights, warnings, hash, command).text());
 }
 

@@ -2,6 +2,7 @@
 
 #include "predict_heights.hpp"
 
+#include "aureole/files/ecsv.hpp"
 #include "aureole/files/run_folder.hpp"
 
 #include <string>
@@ -9,8 +10,10 @@
 
 namespace aureole::app {
 
-/// channels.ecsv, profiles.ecsv, heights.ecsv, exponents.ecsv and summary.json (docs/results.md).
+/// channels.ecsv, profiles.ecsv, heights.ecsv, exponents.ecsv and summary.json (docs/results.md), below the
+/// prefix in the folder.
 void write_tables(files::RunFolder& folder,
+                  const std::string& prefix,
                   const scenario::Scenario& scenario,
                   const MapSettings& settings,
                   const std::vector<MapProduct>& products,
@@ -18,6 +21,13 @@ void write_tables(files::RunFolder& folder,
                   const std::vector<std::string>& warnings,
                   const std::string& hash,
                   const std::string& command);
+
+/// The rows of heights.ecsv, both bands; empty where nothing was measured.
+std::vector<files::EcsvColumn> heights_columns(const PredictedHeights& heights);
+
+/// Appends the rows of the second table to the first; both have the same columns.
+std::vector<files::EcsvColumn> stacked(std::vector<files::EcsvColumn> first,
+                                       const std::vector<files::EcsvColumn>& second);
 
 /// What a person wants to see at the end of a run.
 std::vector<std::string> summary_lines(const scenario::Scenario& scenario,

@@ -26,6 +26,9 @@ struct NamedUnit {
 
 constexpr double joule = 1e7;
 
+constexpr Dimension rigidity_dimension{.length = 1, .field = 1}; // statvolt = G cm
+constexpr Dimension power_dimension{.length = 2, .mass = 1, .time = -3};
+
 /// Sources: FITS Standard 4.0, tables 3 to 5; CODATA 2018 and IAU values in constants.hpp.
 const std::vector<NamedUnit>& named_units() {
     static const std::vector<NamedUnit> units{
@@ -42,6 +45,9 @@ const std::vector<NamedUnit>& named_units() {
         {"K", 1, temperature, true},
         {"G", 1, magnetic_field, true},
         {"T", 1e4, magnetic_field, true},
+        {"V", constants::electronvolt / constants::elementary_charge, rigidity_dimension,
+         true}, // 1e8/c statvolt
+        {"statvolt", 1, rigidity_dimension, false},
         {"eV", constants::electronvolt, energy, true},
         {"erg", 1, energy, false},
         {"J", joule, energy, true},
@@ -249,11 +255,12 @@ const std::vector<BorderUnit>& border_units() {
     static const std::vector<BorderUnit> units{
         {length, "a length", "3 kpc", {"kpc", "pc", "Mpc", "km", "cm"}},
         {time, "a time", "10 Myr", {"Myr", "yr", "s"}},
-        {frequency, "a frequency", "4.85 GHz", {"GHz", "MHz", "Hz"}},
+        {frequency, "a frequency", "4.85 GHz", {"GHz", "MHz", "yr-1", "Hz"}},
         {speed, "a speed", "300 km s-1", {"km s-1", "cm s-1"}},
         {energy, "an energy", "1 GeV", {"GeV", "MeV", "TeV", "PeV", "keV", "eV", "erg"}},
         {temperature, "a temperature", "1e4 K", {"K"}},
         {magnetic_field, "a magnetic field", "5 uG", {"uG", "nG", "mG", "G"}},
+        {rigidity_dimension, "a rigidity", "10 GV", {"GV", "MV", "TV", "PV", "statvolt"}},
         {angle, "an angle", "85 deg", {"deg", "arcmin", "arcsec", "rad"}},
         {number_density, "a number density", "0.1 cm-3", {"cm-3"}},
         {energy_density, "an energy density", "0.5 eV cm-3", {"eV cm-3", "erg cm-3"}},
@@ -268,6 +275,10 @@ const std::vector<BorderUnit>& border_units() {
          "a brightness per pixel",
          "10 uJy/pixel",
          {"Jy/pixel", "mJy/pixel", "uJy/pixel", "erg s-1 cm-2 Hz-1 pixel-1"}},
+        {power_dimension, "a power", "1e41 erg s-1", {"erg s-1"}},
+        {{.length = -2, .mass = 1}, "a column density of mass", "10 g cm-2", {"g cm-2"}},
+        {{.mass = 1, .time = -1}, "a mass per time", "2 solMass yr-1", {"solMass yr-1", "g s-1"}},
+        {{.length = 3, .time = -1}, "a rate coefficient", "1e-9 cm3 s-1", {"cm3 s-1"}},
         {radio_emissivity, "a radio emissivity", "1e-38 erg s-1 cm-3 Hz-1 sr-1", {"erg s-1 cm-3 Hz-1 sr-1"}},
         {photon_emissivity,
          "a photon emissivity",

@@ -1,6 +1,8 @@
 #include "aureole/scenario/keys.hpp"
 
+#include "scenario/key_makers.hpp"
 #include "scenario/profile_names.hpp"
+#include "scenario/transport_keys.hpp"
 
 #include "aureole/base/constants.hpp"
 
@@ -10,9 +12,6 @@
 namespace aureole::scenario {
 
 namespace {
-
-constexpr double infinity = std::numeric_limits<double>::infinity();
-constexpr double tiny = above_zero;
 
 enum class FromFile { no, yes };
 
@@ -25,38 +24,6 @@ std::vector<std::string> profile_choices(FromFile from_file) {
         }
     }
     return choices;
-}
-
-Key quantity(std::string path,
-             const Dimension& dimension,
-             double least,
-             double greatest,
-             std::string otherwise,
-             std::string help) {
-    return {std::move(path), Kind::quantity,       dimension, least,
-            greatest,        std::move(otherwise), {},        std::move(help)};
-}
-
-Key number(std::string path, double least, double greatest, std::string otherwise, std::string help) {
-    return {std::move(path), Kind::number, {}, least, greatest, std::move(otherwise), {}, std::move(help)};
-}
-
-Key integer(std::string path, double least, double greatest, std::string otherwise, std::string help) {
-    return {std::move(path), Kind::integer, {}, least, greatest, std::move(otherwise), {}, std::move(help)};
-}
-
-Key boolean(std::string path, bool otherwise, std::string help) {
-    return {std::move(path), Kind::boolean, {}, -infinity, infinity, otherwise ? "true" : "false", {},
-            std::move(help)};
-}
-
-Key other(std::string path, Kind kind, std::string otherwise, std::string help) {
-    return {std::move(path), kind, {}, -infinity, infinity, std::move(otherwise), {}, std::move(help)};
-}
-
-Key choice(std::string path, std::vector<std::string> choices, std::string otherwise, std::string help) {
-    return {std::move(path),    Kind::choice,   {}, -infinity, infinity, std::move(otherwise),
-            std::move(choices), std::move(help)};
 }
 
 /// The keys of a spatial profile below `path`.
@@ -87,9 +54,11 @@ void add_species(std::vector<Key>& keys,
                  const std::string& hdu,
                  std::vector<std::string> local,
                  const std::string& norm) {
-    keys.push_back(choice(name + ".source", {"none", "file", "closed_form", "energy_density"}, "closed_form",
+    keys.push_back(choice(name + ".source", {"none", "file", "closed_form", "energy_density", "transport"},
+                          "closed_form",
                           "where the spectra come from: " + hdu +
-                              " of input.grid, closed forms, or an energy density with a shape"));
+                              " of input.grid, closed forms, an energy density with a shape, or [transport], "
+                              "which is the default where that table is"));
     keys.push_back(choice(name + ".spectrum", {"power_law", "broken_power_law", "local"}, "power_law",
                           "shape against energy"));
     const std::string first = local.front();
@@ -155,7 +124,9 @@ std::vector<Key> make_keys() {
               "direction along x, or R on an RZ grid (components)"));
     add(other("field.ordered.formula_y", Kind::formula, "0",
               "direction along y, or azimuth on an RZ grid (components)"));
-    add(other("field.ordered.formula_z", Kind::formula, "0", "direction along z (components)"));
+    add(other("field.ordered.formula_z", Kind::formula, "0",
+              "direction along z (components); of a mirrored grid's other side x and y (R and azimuth) keep "
+              "their sign and z turns: even parity, whatever the formulas"));
     add_profile(keys, "field.random", magnetic_field, "none", "0 uG",
                 "the rms of the three-dimensional random field");
 
@@ -184,6 +155,7 @@ std::vector<Key> make_keys() {
     add_species(keys, "electrons", "CR_ELECTRON, CR_POSITRON or CR_LEPTON", {"potgieter_2015"},
                 "1.2e-11 cm-3 GeV-1");
     add_species(keys, "protons", "CR_PROTON", {"vos_potgieter_2015", "dermer_1986"}, "1.5e-9 cm-3 GeV-1");
+    add_transport_keys(keys);
 
     add(boolean("emission.synchrotron", true, "synchrotron radiation"));
     add(boolean("emission.inverse_compton", true, "inverse-Compton radiation"));
@@ -322,18 +294,16 @@ Match match(std::string_view pattern, std::string_view path) {
     return pattern.empty() ? Match::whole : Match::beginning;
 }
 
-/// The pattern with its "<name>" as the user's path has it.
-std::string with_name_of(std::string pattern, std::string_view path) {
-    const auto place = pattern.find("<name>");
-    if (place == std::string::npos) {
-        return pattern;
+/// The pattern with every "<name>" as the user's path has it.
+std::string with_names_of(std::string_view pattern, std::string_view path) {
+    std::string named;
+    while (!pattern.empty()) {
+        const std::string_view part = take_part(pattern);
+        const std::string_view found = take_part(path);
+        named += named.empty() ? "" : ".";
+        named += part == "<name>" && !found.empty() ? found : part;
     }
-    for (auto dots = std::count(pattern.begin(), pattern.begin() + static_cast<std::ptrdiff_t>(place), '.');
-         dots > 0; --dots) {
-        take_part(path);
-    }
-    const std::string_view name = take_part(path);
-    return name.empty() ? pattern : pattern.replace(place, 6, name);
+    return named;
 }
 
 /// Edits between two words: insertions, deletions, substitutions, swaps of neighbours (Damerau 1964, Comm.
@@ -362,7 +332,7 @@ template <class Candidates> std::string nearest_of(std::string_view path, const 
     std::string best;
     std::size_t least = std::numeric_limits<std::size_t>::max();
     for (const Key& key : keys()) {
-        for (const std::string& candidate : candidates(with_name_of(key.path, path))) {
+        for (const std::string& candidate : candidates(with_names_of(key.path, path))) {
             // Someone who shortens a name means that name, however much is left out.
             const std::size_t distance = candidate.starts_with(path) ? 1 : edits(path, candidate);
             if (distance < least) {
@@ -393,6 +363,19 @@ const Key* find_key(std::string_view path) {
 bool is_table(std::string_view path) {
     return std::any_of(keys().begin(), keys().end(),
                        [&](const Key& key) { return match(key.path, path) == Match::beginning; });
+}
+
+bool is_named_table(std::string_view path) {
+    constexpr std::string_view part = ".<name>.";
+    for (const Key& key : keys()) {
+        for (std::size_t at = key.path.find(part); at != std::string::npos;
+             at = key.path.find(part, at + 1)) {
+            if (match(std::string_view(key.path).substr(0, at + part.size() - 1), path) == Match::whole) {
+                return true;
+            }
+        }
+    }
+    return false;
 }
 
 std::string nearest_key(std::string_view path) {

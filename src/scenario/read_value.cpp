@@ -188,7 +188,8 @@ bool is_text(const Key& key) {
 }
 
 bool is_list(const Key& key) {
-    return key.kind == Kind::quantity_list || key.kind == Kind::choice_list || key.kind == Kind::text_list;
+    return key.kind == Kind::quantity_list || key.kind == Kind::number_list ||
+           key.kind == Kind::choice_list || key.kind == Kind::text_list;
 }
 
 } // namespace
@@ -244,6 +245,9 @@ Value read_value(const Key& key, const toml::node& node) {
         return formula_of(node);
     case Kind::quantity_list:
         return quantities_of(key, node);
+    case Kind::number_list:
+        return list_of(
+            node, [&](const toml::node& item) { return in_range(key, number_of(item), node_text(item)); });
     case Kind::choice_list:
         return list_of(node, [&](const toml::node& item) { return one_of(key, text_of(item, "a text")); });
     case Kind::text_list:
@@ -267,6 +271,11 @@ Value read_typed(const Key& key, const std::string& typed) {
     }
     if (!as_toml(in_quotes(typed))) {
         refuse("text that is not UTF-8", "UTF-8");
+    }
+    if (key.kind == Kind::number_list) {
+        if (const auto table = as_toml("[" + typed + "]")) {
+            return read_value(key, *table->get("v"));
+        }
     }
     if (is_list(key) && !typed.starts_with('[') && !typed.starts_with('{')) {
         return read_value(key, split(typed));

@@ -4,6 +4,7 @@
 #include "aureole/scenario/scenario.hpp"
 
 #include <fmt/format.h>
+#include <fmt/ranges.h>
 #include <toml++/toml.h>
 
 #include <algorithm>
@@ -94,8 +95,8 @@ struct Reader {
                                 table != nullptr ? nearest_table(path) : nearest_key(path)));
         } else if (table == nullptr) {
             problem(line, column, path, fmt::format("found {}, expected a table of keys", node_text(node)));
-        } else if (table->empty() && find_key(path + ".temperature") != nullptr) {
-            problem(line, column, path, "found an empty table, expected temperature and value");
+        } else if (table->empty() && (is_named_table(path) || path == "transport")) {
+            problem(line, column, path, "found an empty table, expected keys in it");
         } else {
             read_table(*table, path);
         }
@@ -131,14 +132,22 @@ struct Reader {
 
     void fill_defaults() {
         for (const Key& key : keys()) {
-            const auto place = key.path.find("<name>");
-            if (place == std::string::npos) {
-                fill(key, key.path);
-                continue;
+            if (scenario.has_transport() || !key.path.starts_with("transport.")) {
+                fill_named(key, "", key.path);
             }
-            for (const std::string& chosen : scenario.names(key.path.substr(0, place - 1))) {
-                fill(key, key.path.substr(0, place) + chosen + key.path.substr(place + 6));
-            }
+        }
+    }
+
+    /// `path` continues `before`, in which every "<name>" is replaced already.
+    void fill_named(const Key& key, const std::string& before, const std::string& path) {
+        const auto place = path.find("<name>");
+        if (place == std::string::npos) {
+            fill(key, before + path);
+            return;
+        }
+        const std::string front = before + path.substr(0, place);
+        for (const std::string& chosen : scenario.names(front.substr(0, front.size() - 1))) {
+            fill_named(key, front + chosen, path.substr(place + 6));
         }
     }
 
@@ -152,7 +161,36 @@ struct Reader {
             const auto beside = scenario.entries_.lower_bound(table_of(path) + ".");
             const auto words = describe(key.dimension);
             problem(beside->second.line, beside->second.column, path,
-                    fmt::format("missing, expected {} such as \"{}\"", words.name, words.example));
+                    key.choices.empty()
+                        ? fmt::format("missing, expected {} such as \"{}\"", words.name, words.example)
+                        : fmt::format("missing, expected one of {}", fmt::join(key.choices, ", ")));
+        }
+    }
+
+    /// The species that are solved for unless the scenario says otherwise.
+    void settle_transport() {
+        if (!scenario.has_transport()) {
+            return;
+        }
+        const std::string list = "transport.species";
+        std::vector<std::string> species;
+        for (const char* one : {"electrons", "protons"}) {
+            const std::string source = one + std::string(".source");
+            if (!scenario.has(source) || scenario.text(source) == "transport") {
+                species.emplace_back(one);
+            }
+        }
+        if (!scenario.has(list) && !unsound.contains(list)) {
+            scenario.entries_[list] = {species, false, 0, 0};
+        }
+        if (!scenario.has(list)) {
+            return;
+        }
+        for (const std::string& one : scenario.texts(list)) {
+            const std::string source = one + ".source";
+            if (!scenario.has(source) && !unsound.contains(source)) {
+                scenario.entries_[source] = {std::string("transport"), false, 0, 0};
+            }
         }
     }
 
@@ -196,6 +234,29 @@ struct Reader {
         }
     }
 
+    /// Whether the spectra are asked of the solver and of something else.
+    void check_solved(const std::string& species, const std::string& source) {
+        if (!scenario.has_transport() || !sound({species + ".source", "transport.species"})) {
+            return;
+        }
+        const auto solved = scenario.texts("transport.species");
+        const bool listed = std::find(solved.begin(), solved.end(), species) != solved.end();
+        if (source == "transport" && !listed) {
+            problem("transport.species",
+                    fmt::format("found no {0}, expected them here or another {0}.source than \"transport\"",
+                                species));
+        } else if (source != "transport" && listed) {
+            problem(species + ".source",
+                    fmt::format("found {0} beside transport.species with {1}, expected \"transport\", or a "
+                                "transport.species without {1}",
+                                in_quotes(source), species));
+        } else if (source != "transport" && !scenario.names("transport." + species).empty()) {
+            problem(species + ".source",
+                    fmt::format("found {} beside [transport.{}], expected one of the two", in_quotes(source),
+                                species));
+        }
+    }
+
     void check_species(const std::string& species) {
         const std::string source = scenario.text(species + ".source");
         const bool with_file = !scenario.text("input.grid").empty();
@@ -203,6 +264,7 @@ struct Reader {
             problem(species + ".source",
                     "found \"file\" without input.grid, expected another source or a grid file");
         }
+        check_solved(species, source);
         const std::string density = species + ".energy_density.profile";
         if (source == "energy_density" && !with_file && sound({density}) &&
             scenario.text(density) == "none") {
@@ -350,6 +412,7 @@ parse(std::string_view text, const std::filesystem::path& name, std::span<const 
     for (const std::string& one : overrides) {
         reader.override_with(one);
     }
+    reader.settle_transport();
     reader.fill_defaults();
     reader.check_together();
     return reader.finish();

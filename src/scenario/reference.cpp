@@ -54,6 +54,23 @@ constexpr std::string_view key_head =
     "\n| key | value | range | default | meaning |\n|---|---|---|---|---|\n";
 constexpr std::array<std::string_view, 6> shape_keys{"radius", "height", "core", "slope", "flare", "formula"};
 
+constexpr std::string_view about_transport = R"(
+Where this table stands, the spectra are not read but solved for: particles diffuse and lose energy from their sources to
+the edge of the grid, in a steady state. Sources are populations with names of your choice, at least one for a species,
+each with one of `power`, `supernova_rate`, `star_formation_rate` and, of electrons, `electron_share`. Without `[transport]`
+none of these keys has a value.
+)";
+
+constexpr std::string_view about_law = R"(
+Scattering laws with names of your choice. `kind` says which of the laws that `aureole laws` lists; [laws.md](laws.md) has
+their formulas, the defaults of their parameters, and an example of each. Below, the kinds that take a parameter stand in
+front of its meaning, and the range is that of all kinds together.
+)";
+
+std::string_view about(std::string_view section) {
+    return section == "transport" ? about_transport : section == "law" ? about_law : "";
+}
+
 std::string without_article(const Dimension& dimension) {
     const std::string name = describe(dimension).name;
     return name.substr(name.find(' ') + 1);
@@ -77,6 +94,8 @@ std::string kind_text(const Key& key) {
         return "file";
     case Kind::quantity_list:
         return fmt::format("list: {}", without_article(key.dimension));
+    case Kind::number_list:
+        return "list of numbers";
     case Kind::choice_list:
         return fmt::format("list of `{}`", fmt::join(key.choices, "`, `"));
     case Kind::text_list:
@@ -101,6 +120,12 @@ std::string_view shape_key(const Key& key) {
     const std::string_view last = std::string_view(key.path).substr(dot + 1);
     const bool told_once = std::find(shape_keys.begin(), shape_keys.end(), last) != shape_keys.end();
     return told_once && find_key(key.path.substr(0, dot) + ".profile") != nullptr ? last : std::string_view();
+}
+
+/// Whether the page says of a whole table what this key is: those of factors but for their kind.
+bool is_told_elsewhere(const Key& key) {
+    return !shape_key(key).empty() ||
+           (key.path.find(".factor.<name>.") != std::string::npos && !key.required);
 }
 
 } // namespace
@@ -134,9 +159,9 @@ std::string reference_page() {
         const std::string top = key.path.substr(0, key.path.find('.'));
         if (top != section) {
             section = top;
-            page += fmt::format("\n## {}\n{}", section, key_head);
+            page += fmt::format("\n## {}\n{}{}", section, about(section), key_head);
         }
-        if (shape_key(key).empty()) {
+        if (!is_told_elsewhere(key)) {
             page += row(key, key.path);
         }
     }

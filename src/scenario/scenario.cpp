@@ -20,6 +20,16 @@ bool Scenario::is_set(std::string_view key) const {
     return found != entries_.end() && found->second.given;
 }
 
+bool Scenario::has_transport() const {
+    const auto solved = [&](std::string_view key) {
+        const auto found = entries_.find(key);
+        return found != entries_.end() && found->second.value == Value(std::string("transport"));
+    };
+    const auto first = entries_.lower_bound("transport.");
+    return (first != entries_.end() && first->first.starts_with("transport.")) ||
+           solved("electrons.source") || solved("protons.source");
+}
+
 const Value& Scenario::value(std::string_view key) const {
     const auto found = entries_.find(key);
     if (found == entries_.end()) {

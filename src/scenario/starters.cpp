@@ -326,10 +326,172 @@ to = "60 kpc"
 models = ["exponential", "two_exponential"]
 )toml";
 
-constexpr std::array<Starter, 3> table{{
+constexpr std::string_view scattering_laws =
+    R"toml(# An invented edge-on disc galaxy whose cosmic rays are not given but solved for: sources in the disc, transport with losses,
+# secondary electrons. Three scattering laws agree near R = 8 kpc in the plane at 1 GV and differ elsewhere; the maps and
+# scale heights of each tell them apart. It is nobody's data.
+#   aureole predict scattering_laws.toml -o results
+
+[run]
+title = "Halo of an invented edge-on galaxy under three scattering laws"
+object = "INVENTED EDGE-ON"
+
+# Rings and layers, finer near the plane. Spectra are solved for on the same cells.
+[grid]
+geometry = "RZ"
+radius = "20 kpc"
+height = "15 kpc"
+cells_r = 48
+cells_z = 64
+smallest_z = "0.05 kpc"
+
+[field.ordered]
+profile = "double_exponential"
+value = "6 uG"
+radius = "15 kpc"
+height = "4 kpc"
+direction = "spiral"
+pitch = "15 deg"
+
+[field.random]
+profile = "double_exponential"
+value = "11 uG"
+radius = "12 kpc"
+height = "3 kpc"
+
+# Gas slows particles down and is what they meet: bremsstrahlung, pions, secondary electrons.
+[gas.hi]
+profile = "sech2"
+value = "2.5 cm-3"
+radius = "8 kpc"
+height = "0.3 kpc"
+
+[gas.h2]
+profile = "sech2"
+value = "3 cm-3"
+radius = "3 kpc"
+height = "0.12 kpc"
+
+[gas.hii]
+profile = "double_exponential"
+value = "0.05 cm-3"
+radius = "8 kpc"
+height = "1.2 kpc"
+
+[gas.temperature]
+profile = "constant"
+value = "1e4 K"
+
+# Light, for inverse-Compton losses and radiation; the microwave background is there by default.
+[radiation.component.starlight]
+temperature = "4500 K"
+profile = "double_exponential"
+value = "2 eV cm-3"
+radius = "5 kpc"
+height = "4 kpc"
+
+[radiation.component.dust]
+temperature = "35 K"
+profile = "double_exponential"
+value = "1 eV cm-3"
+radius = "5 kpc"
+height = "4 kpc"
+
+# Spectra from 30 MeV to 100 TeV of kinetic energy. Beyond the edge of the grid the density is taken to fall as 1/r.
+[transport]
+energy_from = "30 MeV"
+energy_to = "100 TeV"
+bins_per_decade = 8
+edge_z = "one_over_r"
+edge_r = "one_over_r"
+laws = ["everywhere_alike", "with_rigidity", "falling_with_height"]
+
+# Supernova remnants: two in a hundred years, each giving a tenth of 1e51 erg to protons.
+[transport.protons.source.remnants]
+distribution = "exponential"
+radius = "4 kpc"
+height = "0.1 kpc"
+supernova_rate = "0.02 yr-1"
+fraction = 0.1
+slope = 2.3
+cutoff_rigidity = "3 PV"
+
+# One electron for fifty protons at the same rigidity, 10 GV; fewer below 5 GV.
+[transport.electrons.source.remnants]
+distribution = "exponential"
+radius = "4 kpc"
+height = "0.1 kpc"
+electron_share = 0.02
+slope = 1.8
+break_rigidity = "5 GV"
+slope_above = 2.5
+cutoff_rigidity = "30 TV"
+
+# The same rate in all places and at all rigidities.
+[law.everywhere_alike]
+kind = "constant"
+anchor = "rate"
+anchor_rate = "1e-9 s-1"
+anchor_radius = "8 kpc"
+anchor_rigidity = "1 GV"
+
+# A power of the rigidity, flatter above 300 GV.
+[law.with_rigidity]
+kind = "rigidity_power"
+slope = 0.55
+break_rigidity = ["300 GV"]
+break_slope = [0.35]
+break_width = [0.2]
+anchor = "rate"
+anchor_rate = "1e-9 s-1"
+anchor_radius = "8 kpc"
+anchor_rigidity = "1 GV"
+
+# The same power without the break, times a fall with height: particles stream freely far from the plane.
+[law.falling_with_height]
+kind = "rigidity_power"
+slope = 0.55
+anchor = "rate"
+anchor_rate = "1e-9 s-1"
+anchor_radius = "8 kpc"
+anchor_rigidity = "1 GV"
+
+[law.falling_with_height.factor.height]
+kind = "falling"
+along = "height"
+form = "exponential"
+length = "3 kpc"
+
+[radio]
+frequencies = ["144 MHz", "330 MHz", "1.5 GHz", "6 GHz"]
+unit = "Jy/beam"
+beam_major = "10 arcsec"
+
+[gamma]
+energies = ["100 MeV", "1 GeV", "10 GeV", "100 GeV"]
+
+[view]
+inclination = "90 deg"
+position_angle = "270 deg"
+distance = "10 Mpc"
+distance_error = "0.8 Mpc"
+
+[map]
+pixel = "2.5 arcsec"
+
+[heights]
+strips = 3
+strip_width = "4 kpc"
+to = "8 kpc"
+models = ["exponential", "two_exponential"]
+)toml";
+
+constexpr std::array<Starter, 4> table{{
     {"edge_on_disc", "edge-on disc galaxy seen at six radio frequencies and in gamma rays", edge_on_disc},
     {"dwarf_wind", "dwarf galaxy with a strong wind and an X-shaped field", dwarf_wind},
     {"large_halo", "massive galaxy in a large gaseous halo", large_halo},
+    {"scattering_laws", "edge-on galaxy whose cosmic rays are solved for under three scattering laws",
+     scattering_laws},
 }};
 
 } // namespace

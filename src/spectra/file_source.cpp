@@ -227,6 +227,9 @@ std::vector<Source> open_sources(const scenario::Scenario& scenario,
     for (const Species species : {Species::electrons, Species::protons}) {
         const std::string key = key_of(species);
         std::string kind = scenario.text(key + ".source");
+        if (kind == "transport") { // solved for, not read
+            continue;
+        }
         const bool in_file = file != nullptr && (species == Species::electrons
                                                      ? file->has("CR_LEPTON") || file->has("CR_ELECTRON") ||
                                                            file->has("CR_POSITRON")

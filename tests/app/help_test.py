@@ -16,7 +16,7 @@ sys.dont_write_bytecode = True
 PROGRAM = os.path.abspath(sys.argv.pop(1))
 SOURCE = pathlib.Path(sys.argv.pop(1)).resolve()
 COMPLETION = SOURCE / "scripts/completion/aureole.bash"
-VERBS = ("predict", "scenario", "inspect", "heights")
+VERBS = ("predict", "scenario", "laws", "inspect", "heights")
 LONG = re.compile(r"(?<![\w-])--[a-z][a-z-]*")
 skipped = []
 
@@ -43,6 +43,11 @@ def options_of_page(verb):
     """Long options in the tag line of a .TP entry."""
     lines = page_of(verb).read_text().replace("\\-", "-").splitlines()
     return {name for above, line in zip(lines, lines[1:]) if above == ".TP" for name in LONG.findall(line)}
+
+
+def names_of_laws():
+    """First words of the lines of the list; what goes on below is indented."""
+    return {line.split()[0] for line in run("laws").stdout.splitlines() if not line.startswith(" ")}
 
 
 def completions(*words, folder=None):
@@ -77,11 +82,13 @@ class Help(unittest.TestCase):
 
     def test_wrong_use_ends_with_2_and_says_what_was_wrong(self):
         for arguments in (("--nonsense",), ("nonsense",), (), ("predict",), ("predict", "--nonsense", "a.toml"),
-                          ("heights",), ("inspect",), ("scenario", "--nonsense"), ("scenario", "nonsense")):
+                          ("heights",), ("inspect",), ("scenario", "--nonsense"), ("scenario", "nonsense"), ("laws", "--nonsense"),
+                          ("laws", "nonsense")):
             done = run(*arguments)
             self.assertEqual((done.returncode, done.stdout), (2, ""), arguments)
             self.assertNotEqual(done.stderr, "", arguments)
         self.assertIn("nonsense", run("predict", "--nonsense", "a.toml").stderr)
+        self.assertIn('"falling"', run("laws", "faling").stderr)
 
 
 class Pages(unittest.TestCase):
@@ -103,6 +110,18 @@ class Pages(unittest.TestCase):
         self.assertGreaterEqual(len(starters), 3)
         for name in starters:
             self.assertIn(f".B {name}\n", text)
+
+    def test_every_law_has_its_line_in_the_page_and_80_columns(self):
+        text = page_of("laws").read_text()
+        laws = names_of_laws()
+        self.assertGreaterEqual(len(laws), 14)
+        for name in laws:
+            self.assertIn(f".B {name}\n", text)
+            done = run("laws", name)
+            self.assertEqual((done.returncode, done.stderr), (0, ""), name)
+            self.assertTrue(done.stdout.startswith(f"{name}: ") and done.stdout.isascii(), name)
+            for line in (*done.stdout.splitlines(), *run("laws").stdout.splitlines()):
+                self.assertLessEqual(len(line), 80, line)
 
     def test_pages_render_without_warnings(self):
         if shutil.which("man"):
@@ -140,6 +159,8 @@ class Completion(unittest.TestCase):
         self.assertEqual(completions(PROGRAM, "pr"), {"predict"})
         starters = {line.split()[0] for line in run("scenario").stdout.splitlines()}
         self.assertEqual(completions(PROGRAM, "scenario", ""), starters)
+        self.assertEqual(completions(PROGRAM, "laws", ""), names_of_laws())
+        self.assertEqual(completions(PROGRAM, "laws", "pa"), {"patchy"})
 
     def test_choices_are_those_of_the_help(self):
         for verb, option in (("predict", "--color"), ("heights", "--noise"), ("heights", "--sides")):
@@ -182,9 +203,9 @@ def header_keywords(path):
 class Documents(unittest.TestCase):
     def test_commands_of_the_documents_use_options_that_exist(self):
         seen = 0
-        for name in ("README.md", "docs/heights.md", "docs/results.md", "docs/grid_file.md", "docs/scenario.md", "DEVELOPERS.md"):
+        for name in ("README.md", "docs/heights.md", "docs/results.md", "docs/grid_file.md", "docs/scenario.md", "docs/laws.md", "DEVELOPERS.md"):
             text = (SOURCE / name).read_text().replace("\\\n", " ")
-            for verb, rest in re.findall(r"aureole (predict|scenario|inspect|heights)\b([^`#\n]*)", text):
+            for verb, rest in re.findall(r"aureole (predict|scenario|laws|inspect|heights)\b([^`#\n]*)", text):
                 seen += 1
                 for option in LONG.findall(rest):
                     self.assertIn(option, options_of_help(verb), f"{name}: aureole {verb}{rest}")

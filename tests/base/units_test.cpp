@@ -42,14 +42,26 @@ constexpr std::string_view shared_units =
 
 const std::vector<Dimension>& spoken_dimensions() {
     namespace d = dimension;
-    static const std::vector<Dimension> dimensions{d::length,           d::time,
-                                                   d::frequency,        d::speed,
-                                                   d::energy,           d::temperature,
-                                                   d::magnetic_field,   d::angle,
-                                                   d::number_density,   d::energy_density,
-                                                   d::spectral_density, d::radio_intensity,
-                                                   d::flux_density,     d::radio_emissivity,
-                                                   d::photon_emissivity};
+    static const std::vector<Dimension> dimensions{d::length,
+                                                   d::time,
+                                                   d::frequency,
+                                                   d::speed,
+                                                   d::energy,
+                                                   d::temperature,
+                                                   d::magnetic_field,
+                                                   d::angle,
+                                                   d::number_density,
+                                                   d::energy_density,
+                                                   d::spectral_density,
+                                                   d::radio_intensity,
+                                                   d::flux_density,
+                                                   d::radio_emissivity,
+                                                   d::photon_emissivity,
+                                                   {.length = 1, .field = 1},
+                                                   {.length = 2, .mass = 1, .time = -3},
+                                                   {.length = -2, .mass = 1},
+                                                   {.mass = 1, .time = -1},
+                                                   {.length = 3, .time = -1}};
     return dimensions;
 }
 
@@ -66,6 +78,9 @@ TEST_CASE("units have the sizes that their definitions give", "[base][units]") {
     CHECK(factor("arcsec") == to_rounding(constants::pi / 648000));
     CHECK(factor("W m-2 Hz-1") == to_rounding(1e3)); // 1 Jy = 1e-26 W m-2 Hz-1 = 1e-23 CGS
     CHECK(factor("10**-26 W m-2 Hz-1") == to_rounding(constants::jansky));
+    CHECK(factor("GV") == to_rounding(1e17 / constants::speed_of_light)); // 1 V = 1e8/c statvolt
+    CHECK(parse_unit("GV").dimension == parse_unit("G cm").dimension);
+    CHECK(parse_unit("GV").dimension == parse_unit("statvolt").dimension);
     CHECK(factor("Pa") == to_rounding(10)); // 1 N/m2 = 1e5 dyn / 1e4 cm2
     CHECK(factor("") == 1);
     CHECK(factor("ph") == 1);
@@ -177,6 +192,8 @@ TEST_CASE("a quantity is written as short as it was typed", "[base][units][round
     CHECK(again("88 deg", dimension::angle) == "88 deg");
     CHECK(again("1.5e-11 cm-3 GeV-1", dimension::spectral_density) == "1.5e-11 cm-3 GeV-1");
     CHECK(again("0 kpc", dimension::length) == "0 kpc");
+    CHECK(again("10 GV", {.length = 1, .field = 1}) == "10 GV");
+    CHECK(again("0.02 yr-1", dimension::frequency) == "0.02 yr-1");
     CHECK(format_quantity(0.1, dimension::none) == "0.1");
     CHECK_THROWS_AS(format_quantity(1, Dimension{.mass = 7}), Error);
 }

@@ -2,8 +2,9 @@
 //   bare_loop GRID.fits [THREADS [REPEATS]]
 // Reads the data of CR_ELECTRON and CR_PROTON, swaps their bytes and multiplies each spectrum with the rows
 // of weights of the benchmark run: 16 gamma-ray channels of 3 inverse-Compton components and of pion decay,
-// and 8 rows of synchrotron radiation. It checks nothing, knows no field, gas or bremsstrahlung, and throws
-// the sums away. Prints the seconds of every repeat and a sum of results.
+// and for each of 8 radio frequencies the four rows between which a run finds the row of a cell's own field.
+// It checks nothing, knows no field, gas or bremsstrahlung, and throws the sums away. Prints the seconds of
+// every repeat and a sum of results.
 #include <omp.h>
 
 #include <algorithm>
@@ -181,7 +182,7 @@ int main(int argc, char** argv) {
     const Spectra electrons = find_spectra(file, "CR_ELECTRON");
     const Spectra protons = find_spectra(file, "CR_PROTON");
     constexpr std::size_t channels = 16;
-    constexpr std::size_t synchrotron_rows = 8;
+    constexpr std::size_t synchrotron_rows = 4 * 8;
     for (int repeat = 0; repeat < repeats; ++repeat) {
         const auto start = std::chrono::steady_clock::now();
         const double kept =

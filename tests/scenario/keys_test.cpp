@@ -22,7 +22,7 @@ TEST_CASE("every key is named once, explained in a line, and found by its path",
         CHECK(find_key(key.path) == &key);
         const bool chooses = key.kind == Kind::choice || key.kind == Kind::choice_list;
         CHECK(chooses == !key.choices.empty());
-        if (key.kind == Kind::choice) {
+        if (key.kind == Kind::choice && !key.otherwise.empty()) {
             CHECK(std::count(key.choices.begin(), key.choices.end(), key.otherwise) == 1);
         }
     }
@@ -42,6 +42,13 @@ TEST_CASE("no key is a table as well", "[scenario][keys]") {
     CHECK(find_key("radiation.component..value") == nullptr);
     CHECK(find_key("gas.hi.value.") == nullptr);
     CHECK(find_key("gas.hi") == nullptr);
+    CHECK(find_key("law.a.factor.b.length") == find_key("law.c.factor.d.length"));
+    CHECK(find_key("law.a.factor.b.length") != find_key("law.a.length"));
+    CHECK(is_named_table("law.a"));
+    CHECK(is_named_table("law.a.factor.b"));
+    CHECK(is_named_table("transport.protons.source.remnants"));
+    CHECK(!is_named_table("law.a.factor"));
+    CHECK(!is_named_table("gas.hi"));
 }
 
 TEST_CASE("every default can be read, so that an empty scenario is a scenario", "[scenario][keys]") {
@@ -49,8 +56,16 @@ TEST_CASE("every default can be read, so that an empty scenario is a scenario", 
     for (const Key& key : keys()) {
         INFO(key.path);
         const bool named = key.path.find("<name>") != std::string::npos;
-        CHECK(scenario.has(key.path) == (!named && !key.otherwise.empty()));
+        const bool solver = key.path.starts_with("transport.");
+        CHECK(scenario.has(key.path) == (!named && !solver && !key.otherwise.empty()));
         CHECK(!scenario.is_set(key.path));
+    }
+    CHECK(!scenario.has_transport());
+    const Scenario solved = parse("electrons.source = \"transport\"", "solved.toml", {});
+    for (const Key& key : keys()) {
+        INFO(key.path);
+        const bool named = key.path.find("<name>") != std::string::npos;
+        CHECK(solved.has(key.path) == (!named && !key.otherwise.empty()));
     }
 }
 
@@ -61,6 +76,9 @@ TEST_CASE("the nearest key is the one with the fewest edits", "[scenario][keys]"
     CHECK(nearest_key("map.pixal") == "map.pixel");               // a substitution
     CHECK(nearest_key("view.incl") == "view.inclination");        // cut short
     CHECK(nearest_key("radiation.component.dust.temprature") == "radiation.component.dust.temperature");
+    CHECK(nearest_key("law.a.slop") == "law.a.slope");
+    CHECK(nearest_key("law.a.factor.b.lenght") == "law.a.factor.b.length");
+    CHECK(nearest_table("law.a.factors.b") == "law.a.factor.b");
     CHECK(nearest_table("gass") == "gas");
     CHECK(nearest_table("gas.h1") == "gas.hi");
     CHECK(nearest_table("radiation.componnet.dust") == "radiation.component.dust");

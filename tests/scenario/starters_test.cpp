@@ -25,7 +25,7 @@ TEST_CASE("every starter is a complete scenario without files", "[scenario][star
               4);
         CHECK(scenario.profile("field.random").value > 0);
     }
-    CHECK(names == std::set<std::string_view>{"edge_on_disc", "dwarf_wind", "large_halo"});
+    CHECK(names == std::set<std::string_view>{"edge_on_disc", "dwarf_wind", "large_halo", "scattering_laws"});
 }
 
 TEST_CASE("the effective scenario of a starter reads back to the same scenario",

@@ -19,7 +19,8 @@ enum class Kind {
     choice,        ///< one of Key::choices
     formula,       ///< muParser text
     path,          ///< relative to the scenario file
-    quantity_list, ///< list of quantities
+    quantity_list, ///< list of quantities, rising
+    number_list,   ///< list of numbers
     choice_list,
     text_list,
 };
@@ -29,7 +30,7 @@ inline constexpr double above_zero = 1e-300;
 
 /// One key of a scenario: the reader, --set, the effective scenario and the reference page are made from it.
 struct Key {
-    std::string path; ///< dotted; "<name>" stands for a name the user chooses
+    std::string path; ///< dotted; every "<name>" stands for a name the user chooses
     Kind kind = Kind::number;
     Dimension dimension;                                     ///< of quantities
     double least = -std::numeric_limits<double>::infinity(); ///< CGS, inclusive
@@ -48,6 +49,9 @@ const Key* find_key(std::string_view path);
 
 /// Whether the dotted path is that of a table of keys, such as "gas" or "gas.hi".
 bool is_table(std::string_view path);
+
+/// Whether the last part of the path of a table is a name the user chooses, as in "radiation.component.dust".
+bool is_named_table(std::string_view path);
 
 /// The known key, or table of keys, nearest to a path: fewest insertions, deletions, substitutions and swaps
 /// of neighbours.

@@ -48,6 +48,9 @@ class Scenario {
     /// Whether the file or an override gives it.
     bool is_set(std::string_view key) const;
 
+    /// Whether spectra are solved for: a key of [transport] is given, or a species has source = "transport".
+    bool has_transport() const;
+
     // Values by dotted path. Error(scenario) naming the key where it has none; asking for another type than
     // the table of keys gives is a programmer's mistake.
     double quantity(std::string_view key) const; ///< CGS

@@ -1,0 +1,351 @@
+#include "law_tables.hpp"
+
+#include "predict_tables.hpp"
+
+#include "aureole/base/constants.hpp"
+#include "aureole/physics/published_spectra.hpp"
+
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+namespace aureole::app {
+
+namespace {
+
+using emission::Band;
+using files::EcsvColumn;
+using transport::KindBudget;
+using transport::Solution;
+using transport::Spectra;
+
+constexpr double megayear = 3.15576e13; // s
+constexpr double nothing = std::numeric_limits<double>::quiet_NaN();
+
+std::string anchor_name(transport::AnchorSpec::Kind kind) {
+    using Kind = transport::AnchorSpec::Kind;
+    switch (kind) {
+    case Kind::rate:
+        return "rate";
+    case Kind::energy_density:
+        return "energy_density";
+    case Kind::grammage:
+        return "grammage";
+    case Kind::gamma_luminosity:
+        return "gamma_luminosity";
+    case Kind::absolute:
+        break;
+    }
+    return "absolute";
+}
+
+/// The total map nearest to 1.4 GHz; null without radio maps.
+const MapProduct* near_21_cm(const Sky& sky) {
+    const MapProduct* nearest = nullptr;
+    const auto distance = [](const MapProduct& map) {
+        return std::abs(std::log(map.channel.centre() / 1.4e9));
+    };
+    for (const MapProduct& map : sky.fine.products) {
+        if (map.plane.band == Band::radio && map.plane.process == "total" &&
+            (nearest == nullptr || distance(map) < distance(*nearest))) {
+            nearest = &map;
+        }
+    }
+    return nearest;
+}
+
+std::vector<EcsvColumn> laws_table(const std::vector<LawResult>& laws) {
+    std::vector<std::string> name, anchor;
+    std::vector<double> factor, rate, over, density, gamma, radio, frequency, power, protons, electrons;
+    std::vector<std::vector<double>> grammage(3), age(3), residence(3);
+    const auto left = [](const Solution& solution, const char* kind) {
+        for (const KindBudget& budget : solution.budgets) {
+            if (budget.name == kind && budget.budget.injected.energy > 0) {
+                double escaped = 0;
+                for (const auto& side : budget.budget.escaped) {
+                    escaped += side.energy;
+                }
+                return escaped / budget.budget.injected.energy;
+            }
+        }
+        return nothing;
+    };
+    for (const LawResult& law : laws) {
+        const auto& report = law.solution.anchor;
+        name.push_back(law.name);
+        anchor.push_back(anchor_name(report.kind));
+        factor.push_back(report.factor);
+        rate.push_back(report.rate);
+        over.push_back(report.over_empirical);
+        density.push_back(report.energy_density / constants::electronvolt);
+        gamma.push_back(report.gamma_luminosity);
+        power.push_back(report.proton_power);
+        protons.push_back(left(law.solution, "protons"));
+        electrons.push_back(left(law.solution, "electrons"));
+        const MapProduct* map = near_21_cm(law.sky);
+        radio.push_back(map != nullptr ? map->luminosity : nothing);
+        frequency.push_back(map != nullptr ? map->channel.centre() : nothing);
+        for (std::size_t r = 0; r < 3; ++r) {
+            grammage[r].push_back(report.grammage[r]);
+            age[r].push_back(report.age[r] / megayear);
+            residence[r].push_back(report.residence[r] / megayear);
+        }
+    }
+    std::vector<EcsvColumn> table{
+        {"law", "", "", name},
+        {"anchor", "", "how the law was scaled", anchor},
+        {"factor", "", "the law was multiplied by it", factor},
+        {"rate", "s-1", "scattering rate at 1 GV at the reference place", rate},
+        {"over_empirical", "", "that of the law as it stood over 1e-9 s-1", over},
+        {"energy_density", "eV cm-3", "cosmic-ray protons at the reference place", density},
+        {"gamma_luminosity", "erg s-1", "pion decay, 0.1 to 100 GeV, whole galaxy", gamma},
+        {"proton_power", "erg s-1", "kinetic energy injected", power},
+        {"protons_escaped", "", "share of the injected energy", protons},
+        {"electrons_escaped", "", "share of the injected energy", electrons},
+        {"radio_luminosity", "erg s-1 Hz-1", "at radio_frequency", radio},
+        {"radio_frequency", "Hz", "of the map nearest to 1.4 GHz", frequency}};
+    const char* at[3] = {"1gv", "10gv", "100gv"};
+    for (std::size_t r = 0; r < 3; ++r) {
+        table.push_back(
+            {fmt::format("grammage_{}", at[r]), "g cm-2", "of protons at the reference place", grammage[r]});
+        table.push_back(
+            {fmt::format("age_{}", at[r]), "Myr", "mean, of protons at the reference place", age[r]});
+        table.push_back({fmt::format("residence_{}", at[r]), "Myr",
+                         "protons in the grid over protons injected per time", residence[r]});
+    }
+    return table;
+}
+
+/// Calls visit(process, erg s-1) for each way energy of one kind leaves.
+template <class Visit> void visit_budget(const KindBudget& kind, Visit&& visit) {
+    const auto& budget = kind.budget;
+    for (std::size_t p = 0; p < kind.processes.size(); ++p) {
+        visit(kind.processes[p], budget.lost[p]);
+    }
+    visit("adiabatic", budget.adiabatic);
+    for (std::size_t s = 0; s < kind.sides.size(); ++s) {
+        visit("escape: " + kind.sides[s], budget.escaped[s].energy);
+    }
+    visit("catastrophic", budget.catastrophic.energy);
+    visit("cooled below the lowest energy", budget.remaining.energy);
+}
+
+std::vector<EcsvColumn> budgets_table(const std::vector<LawResult>& laws) {
+    std::vector<std::string> name, kind, process;
+    std::vector<double> power, share;
+    for (const LawResult& law : laws) {
+        for (const KindBudget& of_kind : law.solution.budgets) {
+            const double injected = of_kind.budget.injected.energy;
+            const auto add = [&](const std::string& what, double value) {
+                name.push_back(law.name);
+                kind.push_back(of_kind.name);
+                process.push_back(what);
+                power.push_back(value);
+                share.push_back(injected > 0 ? value / injected : nothing);
+            };
+            add("injected", injected);
+            visit_budget(of_kind, add);
+            add("defect of the sum", of_kind.budget.defect.energy * injected);
+        }
+    }
+    return {{"law", "", "", name},
+            {"particles", "", "", kind},
+            {"process", "", "", process},
+            {"power", "erg s-1", "kinetic energy, whole galaxy", power},
+            {"share", "", "of the injected power", share}};
+}
+
+/// Cell of a mirrored or two-sided RZ grid that holds a place.
+std::size_t cell_at(const grid::Grid& grid, double radius, double height) {
+    const auto find = [](const std::vector<double>& edges, double at) {
+        const auto above = std::upper_bound(edges.begin(), edges.end(), at);
+        const auto index = std::max<std::ptrdiff_t>(1, above - edges.begin()) - 1;
+        return std::min(static_cast<std::size_t>(index), edges.size() - 2);
+    };
+    return find(grid.x, radius) + grid.nx() * find(grid.z, height);
+}
+
+double middle(const std::vector<double>& edges, std::size_t cell) {
+    return 0.5 * (edges[cell] + edges[cell + 1]);
+}
+
+std::vector<EcsvColumn> pressure_table(const std::vector<LawResult>& laws) {
+    std::vector<std::string> name, axis;
+    std::vector<double> radius, height, pressure;
+    const auto add = [&](const LawResult& law, const char* along, std::size_t i, std::size_t k) {
+        const grid::Grid& grid = law.solution.grid;
+        name.push_back(law.name);
+        axis.emplace_back(along);
+        radius.push_back(middle(grid.x, i) / constants::kiloparsec);
+        height.push_back(middle(grid.z, k) / constants::kiloparsec);
+        pressure.push_back(law.solution.pressure[i + grid.nx() * k] / constants::electronvolt);
+    };
+    for (const LawResult& law : laws) {
+        const grid::Grid& grid = law.solution.grid;
+        const std::size_t place =
+            cell_at(grid, law.solution.anchor.radius, std::max(law.solution.anchor.height, 0.0));
+        for (std::size_t i = 0; i < grid.nx(); ++i) {
+            add(law, "radius", i, place / grid.nx());
+        }
+        for (std::size_t k = 0; k < grid.nz(); ++k) {
+            add(law, "height", place % grid.nx(), k);
+        }
+    }
+    return {{"law", "", "", name},
+            {"axis", "",
+             "radius: along R at the height of the reference place; height: along z at its radius", axis},
+            {"R", "kpc", "centre of the cell", radius},
+            {"z", "kpc", "centre of the cell", height},
+            {"pressure", "eV cm-3", "of cosmic-ray protons", pressure}};
+}
+
+std::vector<EcsvColumn> spectra_table(const std::vector<LawResult>& laws) {
+    std::vector<std::string> name, species;
+    std::vector<double> energy, density;
+    const double per_gev = constants::gigaelectronvolt;
+    const auto add = [&](const std::string& law, const char* kind, double t, double value) {
+        name.push_back(law);
+        species.emplace_back(kind);
+        energy.push_back(t / constants::gigaelectronvolt);
+        density.push_back(value * per_gev);
+    };
+    for (const LawResult& law : laws) {
+        const Solution& solution = law.solution;
+        const std::size_t cell =
+            cell_at(solution.grid, solution.anchor.radius, std::max(solution.anchor.height, 0.0));
+        for (const auto& [kind, spectra] : {std::pair{"protons", &solution.protons},
+                                            {"electrons", &solution.electrons},
+                                            {"positrons", &solution.positrons}}) {
+            for (std::size_t n = 0; *spectra && n < (*spectra)->energy.size(); ++n) {
+                const double t = (*spectra)->energy[n];
+                const double m =
+                    static_cast<double>((*spectra)->weighted[cell * (*spectra)->energy.size() + n]);
+                add(law.name, kind, t, m * std::pow(t, -2.5));
+            }
+        }
+    }
+    // Valid 3 MeV to 100 GeV, and 5 MeV to 50 GeV.
+    for (double t = 0.01; t < 99; t *= 1.2589254117941673) {
+        const double erg = t * constants::gigaelectronvolt;
+        add("Vos & Potgieter 2015, near the Sun", "protons", erg, physics::vos_potgieter_2015_protons(erg));
+        if (t < 50) {
+            add("Potgieter et al. 2015, near the Sun", "electrons", erg,
+                physics::potgieter_2015_electrons(erg));
+        }
+    }
+    return {{"law", "", "or published spectrum", name},
+            {"particles", "", "electrons: with positrons", species},
+            {"energy", "GeV", "kinetic", energy},
+            {"density", "cm-3 GeV-1", "at the reference place", density}};
+}
+
+std::vector<EcsvColumn> heights_table(const std::vector<LawResult>& laws) {
+    std::vector<EcsvColumn> all;
+    std::vector<std::string> name;
+    for (const LawResult& law : laws) {
+        auto columns = heights_columns(law.sky.heights);
+        if (columns.empty()) {
+            continue;
+        }
+        const auto rows =
+            std::visit([](const auto& values) { return values.size(); }, columns.front().values);
+        name.insert(name.end(), rows, law.name);
+        all = all.empty() ? std::move(columns) : stacked(std::move(all), columns);
+    }
+    if (!all.empty()) {
+        all.insert(all.begin(), {"law", "", "", name});
+    }
+    return all;
+}
+
+} // namespace
+
+void write_law_tables(const std::vector<LawResult>& laws, const std::string& hash, files::RunFolder& folder) {
+    const std::vector<std::pair<std::string, std::string>> meta{{"scenario_hash", hash}};
+    folder.write_text("tables/laws.ecsv", files::ecsv_text(laws_table(laws), meta));
+    folder.write_text("tables/budgets.ecsv", files::ecsv_text(budgets_table(laws), meta));
+    folder.write_text("tables/pressure.ecsv", files::ecsv_text(pressure_table(laws), meta));
+    folder.write_text("tables/local_spectra.ecsv", files::ecsv_text(spectra_table(laws), meta));
+    const auto heights = heights_table(laws);
+    if (laws.size() > 1 && !heights.empty()) {
+        folder.write_text("tables/law_heights.ecsv", files::ecsv_text(heights, meta));
+    }
+}
+
+std::vector<std::string> law_lines(const std::vector<LawResult>& laws) {
+    std::vector<std::string> lines{
+        "Scattering laws",
+        fmt::format("{:<16} {:>10} {:>11} {:>11} {:>12} {:>12} {:>9} {:>10}", "law", "factor", "nu/s-1",
+                    "nu/1e-9 s-1", "e_CR/eV cm-3", "X(10GV)/gcm-2", "age/Myr", "L_gamma"),
+    };
+    for (const LawResult& law : laws) {
+        const auto& report = law.solution.anchor;
+        lines.push_back(
+            fmt::format("{:<16} {:>10.4g} {:>11.3g} {:>11.3g} {:>12.3g} {:>13.3g} {:>9.3g} {:>10.3g}",
+                        law.name, report.factor, report.rate, report.over_empirical,
+                        report.energy_density / constants::electronvolt, report.grammage[1],
+                        report.age[1] / megayear, report.gamma_luminosity));
+    }
+    lines.push_back(
+        fmt::format("at R = {:.3g} kpc, z = {:.3g} kpc; nu at 1 GV as used, and as the law stood over "
+                    "the empirical rate; age at 10 GV; L_gamma in erg/s, 0.1 to 100 GeV",
+                    laws.front().solution.anchor.radius / constants::kiloparsec,
+                    laws.front().solution.anchor.height / constants::kiloparsec));
+    lines.emplace_back("");
+    lines.emplace_back("Where the energy went");
+    for (const LawResult& law : laws) {
+        for (const KindBudget& kind : law.solution.budgets) {
+            const double injected = kind.budget.injected.energy;
+            std::string parts;
+            visit_budget(kind, [&](const std::string& process, double power) {
+                if (injected > 0 && power / injected > 0.005) {
+                    parts += fmt::format("{}{} {:.0f} %", parts.empty() ? "" : ", ", process,
+                                         100 * power / injected);
+                }
+            });
+            lines.push_back(
+                fmt::format("{:<16} {:<20} {:.3g} erg/s: {}", law.name, kind.name, injected, parts));
+        }
+    }
+    return lines;
+}
+
+std::vector<std::string> law_warnings(const LawResult& law, double source_age) {
+    std::vector<std::string> warnings;
+    const Solution& solution = law.solution;
+    for (const auto& march : solution.marches) {
+        if (march.limiter_not_converged > 0) {
+            warnings.push_back(fmt::format("{}: {}: the flux limiter did not converge at {} momenta",
+                                           law.name, march.name, march.limiter_not_converged));
+        }
+        constexpr double worth_saying = 0.01;
+        if (march.limited_energy > worth_saying) {
+            warnings.push_back(fmt::format(
+                "{}: {}: {:.2g} % of the energy is where diffusion would outrun the particles (flux limited)",
+                law.name, march.name, 100 * march.limited_energy));
+        }
+    }
+    if (solution.confinement.needed && !solution.confinement.converged) {
+        warnings.push_back(
+            fmt::format("{}: the waves did not settle: the last iteration changed the spectra by "
+                        "{:.2g}",
+                        law.name, solution.confinement.change.back()));
+    }
+    if (solution.confinement.needed) {
+        warnings.push_back(
+            fmt::format("{}: self-confined solutions far above the Alfven speed are unstable in "
+                        "time; the steady one may not be reached",
+                        law.name));
+    }
+    if (solution.anchor.age[0] > source_age) {
+        warnings.push_back(
+            fmt::format("{}: protons of 1 GV are {:.2g} Gyr old on average at the reference place, "
+                        "older than the sources ({:.2g} Gyr): the galaxy is not steady",
+                        law.name, solution.anchor.age[0] / megayear / 1e3, source_age / megayear / 1e3));
+    }
+    return warnings;
+}
+
+} // namespace aureole::app

@@ -1,0 +1,30 @@
+#pragma once
+
+#include "sky.hpp"
+
+#include "aureole/files/ecsv.hpp"
+#include "aureole/transport/solve.hpp"
+
+#include <string>
+#include <vector>
+
+namespace aureole::app {
+
+/// One scattering law of a run: what was solved for, and what it looks like.
+struct LawResult {
+    std::string name;
+    transport::Solution solution;
+    Sky sky;
+};
+
+/// laws.ecsv, budgets.ecsv, pressure.ecsv, local_spectra.ecsv and, for several laws, law_heights.ecsv
+/// (docs/results.md), side by side in tables/.
+void write_law_tables(const std::vector<LawResult>& laws, const std::string& hash, files::RunFolder& folder);
+
+/// The same for the terminal: one line a law, and where the energy went.
+std::vector<std::string> law_lines(const std::vector<LawResult>& laws);
+
+/// What a reader must know of a solution.
+std::vector<std::string> law_warnings(const LawResult& law, double source_age);
+
+} // namespace aureole::app

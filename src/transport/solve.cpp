@@ -1,0 +1,551 @@
+#include "aureole/transport/solve.hpp"
+
+#include "anchor_search.hpp"
+#include "reports.hpp"
+#include "run.hpp"
+
+#include "aureole/base/constants.hpp"
+#include "aureole/physics/gyration.hpp"
+
+#include <Eigen/Dense>
+#include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
+
+namespace aureole::transport {
+namespace {
+
+constexpr int most_iterations = 60;
+constexpr double confined_tolerance = 5e-4;
+/// Limiter in the iterations of a confined law; its last march has the usual one.
+constexpr double loose_limiter = 1e-3;
+constexpr int few_limiter_rounds = 15;
+
+double momentum_of(double rigidity) {
+    return rigidity * constants::elementary_charge / constants::speed_of_light;
+}
+
+/// Protons for one factor of a law.
+struct Protons {
+    Scattering scattering;
+    double factor = 1;
+    Run run;
+    ConfinementReport confinement;
+    std::vector<double> weighted;
+    const std::vector<double>& density() const { return run.result.density[0]; }
+};
+
+class Solver {
+  public:
+    Solver(const Problem& problem, const NamedLaw& law, const RunContext& context)
+        : problem_(problem), named_(law), context_(context), law_(checked_law(law.law)),
+          cells_(problem.mesh.cells()), resonant_(depends_on_cosmic_rays(law_)) {
+        choose_place();
+        if (resonant_ && !problem.spec.protons) {
+            throw Error(ErrorKind::scenario, "found a law that depends on the cosmic rays without protons, "
+                                             "which drive the waves; expected transport.protons = true");
+        }
+        if (needs_search() && !problem.spec.protons) {
+            throw Error(ErrorKind::scenario,
+                        "anchor: found a quantity of the protons to meet without protons, expected "
+                        "transport.protons = true or another anchor");
+        }
+    }
+
+    Solution run() {
+        Solution solution;
+        solution.law = named_.name;
+        solution.grid = problem_.media.grid;
+        solution.of_gas = problem_.media.of_gas;
+        solution.of_field_energy = problem_.media.of_field_energy;
+        solution.of_radiation = problem_.media.of_radiation;
+        report_ = &solution.anchor;
+        solution.anchor = {
+            .kind = named_.anchor.kind, .value = named_.anchor.value, .radius = radius_, .height = height_};
+        Scattering scattering;
+        if (problem_.spec.protons) {
+            Protons protons = find_protons();
+            add_protons(protons, solution);
+            scattering = std::move(protons.scattering);
+            if (problem_.spec.electrons) {
+                add_electrons(scattering, protons.weighted, solution);
+            }
+        } else {
+            scattering = scattered_by(anchored_law(1, {}), {});
+            add_electrons(scattering, {}, solution);
+        }
+        report_rates(scattering, solution);
+        return solution;
+    }
+
+  private:
+    bool needs_search() const {
+        return named_.anchor.kind == AnchorSpec::Kind::energy_density ||
+               named_.anchor.kind == AnchorSpec::Kind::grammage ||
+               named_.anchor.kind == AnchorSpec::Kind::gamma_luminosity;
+    }
+
+    void choose_place() {
+        const grid::Grid& grid = problem_.media.grid;
+        const auto kind = named_.anchor.kind;
+        if (kind == AnchorSpec::Kind::absolute || kind == AnchorSpec::Kind::gamma_luminosity) {
+            radius_ = empirical_radius() < grid.x.back() ? empirical_radius() : 0.5 * grid.x.back();
+            height_ = 0;
+        } else {
+            radius_ = named_.anchor.radius;
+            height_ = named_.anchor.height;
+            const double bottom = grid.mirrored ? -grid.z.back() : grid.z.front();
+            if (!(radius_ >= 0 && radius_ <= grid.x.back() && height_ >= bottom &&
+                  height_ <= grid.z.back())) {
+                throw Error(ErrorKind::scenario,
+                            fmt::format("anchor: found the place R = {:.4g} kpc, z = {:.4g} kpc, expected "
+                                        "one inside the grid",
+                                        radius_ / constants::kiloparsec, height_ / constants::kiloparsec));
+            }
+        }
+        if (kind != AnchorSpec::Kind::absolute &&
+            !(named_.anchor.value > 0 && std::isfinite(named_.anchor.value))) {
+            throw Error(ErrorKind::scenario, fmt::format("anchor: found the value {:g}, expected one above 0",
+                                                         named_.anchor.value));
+        }
+        if ((kind == AnchorSpec::Kind::rate || kind == AnchorSpec::Kind::grammage) &&
+            !(named_.anchor.rigidity > 0)) {
+            throw Error(ErrorKind::scenario,
+                        fmt::format("anchor: found the rigidity {:g} statvolt, expected one above 0",
+                                    named_.anchor.rigidity));
+        }
+        around_ = surroundings(grid, radius_, height_);
+        place_ = place_at(problem_.media, radius_, height_, problem_.spec.helium_fraction);
+    }
+
+    /// Pressure and gradient in resonance at the place of the report.
+    struct Local {
+        std::optional<double> pressure, gradient;
+    };
+    Local local_resonance(const Resonance& at_cells, double rigidity) const {
+        if (at_cells.empty()) {
+            return {};
+        }
+        std::vector<double> values;
+        const auto& nodes = problem_.protons.momentum;
+        resonance_at(at_cells.log_pressure, nodes, momentum_of(rigidity), cells_, values);
+        const double pressure = interpolated(values, around_);
+        resonance_at(at_cells.log_gradient, nodes, momentum_of(rigidity), cells_, values);
+        return {pressure, interpolated(values, around_)};
+    }
+
+    /// The law times a factor, or with the rate that it is anchored with.
+    std::pair<Law, double> anchored_law(double factor, const Resonance& at_cells) const {
+        if (named_.anchor.kind == AnchorSpec::Kind::rate) {
+            const Local local = local_resonance(at_cells, named_.anchor.rigidity);
+            const Anchored result = anchored(law_, place_, reference_particle(named_.anchor.rigidity),
+                                             named_.anchor.value, local.pressure, local.gradient);
+            return {result.law, result.factor};
+        }
+        Law law = law_;
+        law.scale *= factor;
+        return {law, factor};
+    }
+
+    Scattering scattered_by(const std::pair<Law, double>& law, Resonance resonance) const {
+        return {law.first, prepare(law.first, problem_.march_places), std::move(resonance),
+                resonant_ && problem_.spec.streaming};
+    }
+
+    static Streaming drift(const Scattering& scattering) {
+        return scattering.streaming ? Streaming::flow : Streaming::none;
+    }
+
+    Run march_protons(const Scattering& scattering, bool loosely) const {
+        RunOptions options{.limiter = problem_.limiter,
+                           .streaming = scattering.streaming ? Streaming::diffusion : Streaming::none};
+        if (loosely) {
+            options.limiter_tolerance = loose_limiter;
+            options.limiter_iterations = few_limiter_rounds;
+        }
+        return run_species(problem_, problem_.protons, scattering, primary_sources(problem_.protons), options,
+                           context_);
+    }
+
+    Protons protons_with(double factor) {
+        ++report_->solutions;
+        Protons protons;
+        protons.confinement.needed = resonant_;
+        if (resonant_) {
+            confine(factor, protons);
+        } else {
+            const auto law = anchored_law(factor, {});
+            protons.scattering = scattered_by(law, {});
+            protons.factor = law.second;
+        }
+        protons.run = march_protons(protons.scattering, false);
+        protons.weighted = weighted_density(problem_.protons, protons.density(), cells_);
+        return protons;
+    }
+
+    /// Iterates rates and densities.
+    void confine(double factor, Protons& protons) {
+        const Law start =
+            checked_law({.name = "rigidity_power", .numbers = {}, .lists = {}, .texts = {}, .children = {}});
+        Scattering first{start, prepare(start, problem_.march_places), {}, false};
+        std::vector<double> density = march_protons(first, true).result.density[0];
+        Resonance mixed = resonance_of(problem_, density, false);
+        for (int iteration = 0; iteration < most_iterations; ++iteration) {
+            const bool rate = named_.anchor.kind == AnchorSpec::Kind::rate;
+            const auto law = anchored_law(factor, rate ? resonance_of(problem_, density, true) : Resonance{});
+            protons.scattering = scattered_by(law, mixed);
+            protons.factor = law.second;
+            std::vector<double> next = march_protons(protons.scattering, true).result.density[0];
+            protons.confinement.change.push_back(density_change(problem_, density, next));
+            density = std::move(next);
+            if (protons.confinement.change.back() <= confined_tolerance) {
+                return;
+            }
+            mix(resonance_of(problem_, density, false), mixed);
+        }
+        protons.confinement.converged = false;
+    }
+
+    /// Moves the resonance towards what was found. Rates rise with the gradient, which they lower: without
+    /// streaming going beyond is faster; drifting turns around with the gradient and needs small steps.
+    void mix(const Resonance& found, Resonance& mixed) const {
+        const auto move = [](const std::vector<double>& to, double share, std::vector<double>& from) {
+            for (std::size_t i = 0; i < from.size(); ++i) {
+                from[i] += share * (to[i] - from[i]);
+            }
+        };
+        const bool streaming = problem_.spec.streaming;
+        move(found.log_pressure, streaming ? 0.6 : 1.0, mixed.log_pressure);
+        move(found.log_gradient, streaming ? 0.6 : 1.4, mixed.log_gradient);
+        move(found.direction, streaming ? 0.25 : 1.0, mixed.direction);
+    }
+
+    double energy_density(const Protons& protons) const {
+        return interpolated(moment(energy_weights(*problem_.protons.basis), protons.weighted, cells_),
+                            around_);
+    }
+
+    double gamma_luminosity(const Protons& protons) const {
+        const auto per_nucleus = moment(problem_.gamma, protons.weighted, cells_);
+        double sum = 0;
+        for (std::size_t cell = 0; cell < cells_; ++cell) {
+            sum += problem_.mesh.volume[cell] * problem_.hydrogen[cell] * per_nucleus[cell];
+        }
+        return problem_.halves * sum;
+    }
+
+    /// Densities of age (source psi) and of grammage (source rho v psi), [2][nodes][cells].
+    std::vector<std::vector<double>> tracers(const SpeciesProblem& species,
+                                             const Scattering& scattering,
+                                             const std::vector<double>& density) const {
+        const double gram = constants::proton_mass * (1 + 4 * problem_.spec.helium_fraction);
+        const SourceFunction sources = [&](double momentum, std::vector<std::vector<double>>& out) {
+            at_momentum(density, node_weights(species.momentum, momentum), cells_, out[0]);
+            const double speed = particle_of_momentum(momentum, species.rest_energy).speed;
+            for (std::size_t cell = 0; cell < cells_; ++cell) {
+                out[1][cell] = gram * problem_.hydrogen[cell] * speed * out[0][cell];
+            }
+        };
+        const RunOptions options{.kinds = 2, .frozen = &density, .streaming = drift(scattering)};
+        return run_species(problem_, species, scattering, sources, options, context_).result.density;
+    }
+
+    /// Tracer over density at the place of the report.
+    double tracer_at(const SpeciesProblem& species,
+                     std::span<const double> tracer,
+                     std::span<const double> density,
+                     double momentum) const {
+        std::vector<double> upper(cells_);
+        std::vector<double> lower(cells_);
+        const NodeWeights nodes = node_weights(species.momentum, momentum);
+        at_momentum(tracer, nodes, cells_, upper);
+        at_momentum(density, nodes, cells_, lower);
+        const double particles = interpolated(lower, around_);
+        return particles > 0 ? interpolated(upper, around_) / particles : 0;
+    }
+
+    bool marched(const SpeciesProblem& species, double momentum) const {
+        return momentum <= species.momentum.front() && momentum >= species.momentum.back();
+    }
+
+    double quantity(const Protons& protons) const {
+        switch (named_.anchor.kind) {
+        case AnchorSpec::Kind::energy_density:
+            return energy_density(protons);
+        case AnchorSpec::Kind::gamma_luminosity:
+            return gamma_luminosity(protons);
+        case AnchorSpec::Kind::grammage: {
+            const double momentum = momentum_of(named_.anchor.rigidity);
+            if (!marched(problem_.protons, momentum)) {
+                throw Error(ErrorKind::scenario,
+                            fmt::format("anchor: found the rigidity {:g} GV, expected one within the "
+                                        "energies of the protons",
+                                        named_.anchor.rigidity / physics::gigavolt));
+            }
+            const auto density = tracers(problem_.protons, protons.scattering, protons.density());
+            return tracer_at(problem_.protons, density[1], protons.density(), momentum);
+        }
+        case AnchorSpec::Kind::absolute:
+        case AnchorSpec::Kind::rate:
+            break;
+        }
+        return 0;
+    }
+
+    std::string quantity_name() const {
+        switch (named_.anchor.kind) {
+        case AnchorSpec::Kind::energy_density:
+            return "energy density";
+        case AnchorSpec::Kind::gamma_luminosity:
+            return "gamma-ray luminosity";
+        default:
+            return "grammage";
+        }
+    }
+
+    Protons find_protons() {
+        if (!needs_search()) {
+            return protons_with(1);
+        }
+        Protons last;
+        factor_for(
+            [&](double factor) {
+                last = protons_with(factor);
+                report_->achieved = quantity(last);
+                return report_->achieved;
+            },
+            named_.anchor.value, quantity_name());
+        return last;
+    }
+
+    void add_protons(const Protons& protons, Solution& solution) {
+        const SpeciesProblem& species = problem_.protons;
+        if (resonant_) {
+            cell_resonance_ = resonance_of(problem_, protons.density(), true);
+        }
+        solution.confinement = protons.confinement;
+        solution.pressure = moment(pressure_weights(*problem_.protons.basis), protons.weighted, cells_);
+        solution.energy_density = moment(energy_weights(*problem_.protons.basis), protons.weighted, cells_);
+        report_->factor = protons.factor;
+        report_->energy_density = interpolated(solution.energy_density, around_);
+        report_->gamma_luminosity = gamma_luminosity(protons);
+        solution.marches.push_back(
+            march_report(problem_, "protons", species, protons.run, protons.density()));
+        warn(solution.marches.back());
+        solution.budgets.push_back(whole_budget(problem_, "protons", species, protons.run.result.budget[0],
+                                                power_of(problem_.spec.proton_sources)));
+        report_->proton_power = solution.budgets.back().marched;
+        const auto tracer = tracers(species, protons.scattering, protons.density());
+        solution.protons =
+            spectra_of(species, protons.scattering, protons.density(), protons.run.result.limited);
+        set_ages(species, tracer[0], protons.density(), *solution.protons);
+        for (std::size_t i = 0; i < 3; ++i) {
+            report_->rigidity[i] = std::pow(10.0, static_cast<double>(i)) * physics::gigavolt;
+            const double momentum = momentum_of(report_->rigidity[i]);
+            if (!marched(species, momentum)) {
+                continue;
+            }
+            report_->age[i] = tracer_at(species, tracer[0], protons.density(), momentum);
+            report_->grammage[i] = tracer_at(species, tracer[1], protons.density(), momentum);
+            std::vector<double> here(cells_);
+            at_momentum(protons.density(), node_weights(species.momentum, momentum), cells_, here);
+            double number = 0;
+            for (std::size_t cell = 0; cell < cells_; ++cell) {
+                number += problem_.halves * problem_.mesh.volume[cell] * here[cell];
+            }
+            double injection = 0;
+            for (const SourceTerm& term : species.sources) {
+                injection += injected(term, momentum, species.step_ln);
+            }
+            report_->residence[i] = injection > 0 ? number / injection : 0;
+        }
+    }
+
+    void
+    add_electrons(const Scattering& scattering, std::span<const double> proton_weighted, Solution& solution) {
+        const SpeciesProblem& species = problem_.electrons;
+        const bool secondaries = !problem_.secondaries.momentum.empty() && !proton_weighted.empty();
+        const auto primary = primary_sources(species);
+        Eigen::MatrixXd electrons;
+        Eigen::MatrixXd positrons;
+        if (secondaries) {
+            using Rows = Eigen::Matrix<double, Eigen::Dynamic, Eigen::Dynamic, Eigen::RowMajor>;
+            const SecondaryMatrix& matrix = problem_.secondaries;
+            const auto leptons = static_cast<Eigen::Index>(matrix.momentum.size());
+            const auto nodes = static_cast<Eigen::Index>(matrix.protons);
+            const Eigen::Map<const Eigen::MatrixXd> protons(proton_weighted.data(),
+                                                            static_cast<Eigen::Index>(cells_), nodes);
+            electrons = protons * Eigen::Map<const Rows>(matrix.electrons.data(), leptons, nodes).transpose();
+            positrons = protons * Eigen::Map<const Rows>(matrix.positrons.data(), leptons, nodes).transpose();
+        }
+        const SourceFunction sources = [&](double momentum, std::vector<std::vector<double>>& out) {
+            primary(momentum, out);
+            if (!secondaries) {
+                return;
+            }
+            const auto row = static_cast<Eigen::Index>(stage_of(momentum));
+            for (std::size_t cell = 0; cell < cells_; ++cell) {
+                const auto c = static_cast<Eigen::Index>(cell);
+                out[1][cell] += problem_.hydrogen[cell] * std::max(0.0, electrons(c, row));
+                out[2][cell] += problem_.hydrogen[cell] * std::max(0.0, positrons(c, row));
+            }
+        };
+        const RunOptions options{
+            .kinds = secondaries ? 3U : 1U, .limiter = problem_.limiter, .streaming = drift(scattering)};
+        Run run = run_species(problem_, species, scattering, sources, options, context_);
+        std::vector<double> all = run.result.density[0];
+        for (std::size_t kind = 1; kind < run.result.density.size(); ++kind) {
+            for (std::size_t i = 0; i < all.size(); ++i) {
+                all[i] += run.result.density[kind][i];
+            }
+        }
+        solution.electrons = spectra_of(species, scattering, all, run.result.limited);
+        solution.marches.push_back(march_report(problem_, "electrons", species, run, all));
+        warn(solution.marches.back());
+        solution.budgets.push_back(whole_budget(problem_, "electrons", species, run.result.budget[0],
+                                                power_of(problem_.spec.electron_sources)));
+        if (secondaries) {
+            solution.positrons = spectra_of(species, scattering, run.result.density[2], run.result.limited);
+            solution.budgets.push_back(
+                whole_budget(problem_, "secondary electrons", species, run.result.budget[1], 0));
+            solution.budgets.push_back(whole_budget(problem_, "positrons", species, run.result.budget[2], 0));
+        }
+        if (!problem_.spec.protons) {
+            const auto tracer = tracers(species, scattering, all);
+            set_ages(species, tracer[0], all, *solution.electrons);
+        }
+    }
+
+    std::size_t stage_of(double momentum) const {
+        const auto& stages = problem_.secondaries.momentum; // descending
+        const auto after = std::lower_bound(stages.begin(), stages.end(), momentum * (1 + 1e-9),
+                                            [](double a, double b) { return a > b; });
+        return std::min(static_cast<std::size_t>(after - stages.begin()), stages.size() - 1);
+    }
+
+    std::size_t kept_nodes(const SpeciesProblem& species) const {
+        const auto energy = species.basis->energy();
+        const auto above = std::lower_bound(energy.begin(), energy.end(), problem_.spec.energy_to);
+        return std::min(static_cast<std::size_t>(above - energy.begin()) + 2, energy.size());
+    }
+
+    Spectra spectra_of(const SpeciesProblem& species,
+                       const Scattering& scattering,
+                       const std::vector<double>& density,
+                       const std::vector<float>& limited) {
+        Spectra spectra;
+        const std::size_t nodes = kept_nodes(species);
+        const std::size_t all = species.momentum.size();
+        const auto energy = species.basis->energy();
+        spectra.energy.assign(energy.begin(), energy.begin() + static_cast<std::ptrdiff_t>(nodes));
+        const auto weighted = weighted_density(species, density, cells_);
+        spectra.weighted.resize(cells_ * nodes);
+        spectra.scattering_rate.resize(cells_ * nodes);
+        spectra.limited.resize(limited.empty() ? 0 : cells_ * nodes);
+        const PreparedLaw law = prepare(scattering.law, problem_.cell_places);
+        std::vector<double> rate(cells_);
+        std::vector<double> pressure;
+        std::vector<double> gradient;
+        for (std::size_t node = 0; node < nodes; ++node) {
+            const double momentum = species.momentum[all - 1 - node];
+            spectra.momentum.push_back(momentum);
+            ResonantPressure resonant;
+            if (resonant_) {
+                const auto& protons = problem_.protons.momentum;
+                resonance_at(cell_resonance_.log_pressure, protons, momentum, cells_, pressure);
+                resonance_at(cell_resonance_.log_gradient, protons, momentum, cells_, gradient);
+                resonant = {pressure, gradient};
+            }
+            rates(law, particle_of_momentum(momentum, species.rest_energy), resonant, rate,
+                  limits_of(problem_));
+            for (std::size_t cell = 0; cell < cells_; ++cell) {
+                spectra.weighted[cell * nodes + node] = static_cast<float>(weighted[node * cells_ + cell]);
+                spectra.scattering_rate[cell * nodes + node] = static_cast<float>(rate[cell]);
+                if (!limited.empty()) {
+                    spectra.limited[cell * nodes + node] = limited[(all - 1 - node) * cells_ + cell];
+                }
+            }
+        }
+        return spectra;
+    }
+
+    void set_ages(const SpeciesProblem& species,
+                  std::span<const double> tracer,
+                  std::span<const double> density,
+                  Spectra& spectra) const {
+        const std::size_t nodes = spectra.energy.size();
+        const std::size_t all = species.momentum.size();
+        spectra.age.resize(cells_ * nodes);
+        for (std::size_t node = 0; node < nodes; ++node) {
+            for (std::size_t cell = 0; cell < cells_; ++cell) {
+                const std::size_t at = (all - 1 - node) * cells_ + cell;
+                spectra.age[cell * nodes + node] =
+                    density[at] > 0 ? static_cast<float>(tracer[at] / density[at]) : 0.0F;
+            }
+        }
+    }
+
+    void warn(const MarchReport& report) const {
+        if (report.limiter_not_converged > 0) {
+            context_.say(LogLevel::warning,
+                         fmt::format("law '{}', {}: the flux limiter did not converge at {} momenta",
+                                     named_.name, report.name, report.limiter_not_converged));
+        }
+    }
+
+    void report_rates(const Scattering& scattering, const Solution& solution) {
+        const Local local = local_resonance(cell_resonance_, empirical_rigidity());
+        report_->rate = rate_at(scattering.law, place_, reference_particle(empirical_rigidity()),
+                                local.pressure, local.gradient);
+        report_->factor = scattering.law.scale / law_.scale;
+        report_->over_empirical = report_->rate / report_->factor / empirical_rate;
+        if (named_.anchor.kind == AnchorSpec::Kind::rate) {
+            const Local there = local_resonance(cell_resonance_, named_.anchor.rigidity);
+            report_->achieved = rate_at(scattering.law, place_, reference_particle(named_.anchor.rigidity),
+                                        there.pressure, there.gradient);
+        }
+        if (!solution.confinement.converged) {
+            context_.say(LogLevel::warning,
+                         fmt::format("law '{}': scattering and cosmic rays did not settle in {} iterations; "
+                                     "the last change was {:.2g}",
+                                     named_.name, solution.confinement.change.size(),
+                                     solution.confinement.change.back()));
+        }
+    }
+
+    const Problem& problem_;
+    const NamedLaw& named_;
+    const RunContext& context_;
+    Law law_;
+    std::size_t cells_;
+    bool resonant_;
+    double radius_ = 0, height_ = 0;
+    Surroundings around_;
+    Place place_;
+    Resonance cell_resonance_;
+    AnchorReport* report_ = nullptr;
+};
+
+} // namespace
+
+Solution solve(const Problem& problem, const NamedLaw& law, const RunContext& context) {
+    try {
+        return Solver(problem, law, context).run();
+    } catch (Error& error) {
+        if (error.kind() == ErrorKind::scenario) {
+            error.in("law '" + law.name + "'");
+        }
+        throw;
+    }
+}
+
+Solution solve(const TransportSpec& spec,
+               const NamedLaw& law,
+               const grid::Grid& grid,
+               const media::Media& media,
+               const RunContext& context) {
+    return solve(prepare_problem(spec, grid, media, context), law, context);
+}
+
+} // namespace aureole::transport
