@@ -8,6 +8,7 @@
 #include "aureole/files/fits_reader.hpp"
 #include "aureole/grid/grid_file.hpp"
 #include "aureole/scenario/scenario.hpp"
+#include "aureole/transport/read_scenario.hpp"
 
 #include <fmt/format.h>
 #include <fmt/ranges.h>
@@ -274,11 +275,34 @@ void print_scenario(const scenario::Scenario& scenario) {
                format_quantity(scenario.quantity("view.distance"), dimension::length));
 }
 
+void print_transport(const transport::TransportSpec& spec) {
+    std::string laws;
+    for (const auto& law : spec.laws) {
+        laws += (laws.empty() ? "" : ", ") + law.name + " (" + law.law.name + ")";
+    }
+    const auto power = [](const std::vector<transport::SourceSpec>& sources) {
+        double sum = 0;
+        for (const auto& source : sources) {
+            sum += source.power;
+        }
+        return sum;
+    };
+    fmt::print("  laws       {}\n", laws);
+    fmt::print("  sources    protons {:.3g} erg/s, electrons {:.3g} erg/s\n", power(spec.proton_sources),
+               power(spec.electron_sources));
+}
+
 int inspect_scenario(const std::string& path, bool quiet) {
     try {
         const auto scenario = scenario::load(path, {});
         if (!quiet) {
             print_scenario(scenario);
+        }
+        if (scenario.has_transport()) {
+            const auto spec = transport::read_transport(scenario);
+            if (!quiet) {
+                print_transport(spec);
+            }
         }
         const auto grid_path = scenario.path("input.grid");
         if (!grid_path.empty()) {

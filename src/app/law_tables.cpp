@@ -312,6 +312,13 @@ std::vector<std::string> law_lines(const std::vector<LawResult>& laws) {
     return lines;
 }
 
+bool has_converged(const LawResult& law) {
+    const auto& marches = law.solution.marches;
+    const bool limiter = std::all_of(marches.begin(), marches.end(),
+                                     [](const auto& march) { return march.limiter_not_converged == 0; });
+    return limiter && (!law.solution.confinement.needed || law.solution.confinement.converged);
+}
+
 std::vector<std::string> law_warnings(const LawResult& law, double source_age) {
     std::vector<std::string> warnings;
     const Solution& solution = law.solution;

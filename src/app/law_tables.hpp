@@ -24,6 +24,9 @@ void write_law_tables(const std::vector<LawResult>& laws, const std::string& has
 /// The same for the terminal: one line a law, and where the energy went.
 std::vector<std::string> law_lines(const std::vector<LawResult>& laws);
 
+/// False where an iteration of the solver was left unfinished.
+bool has_converged(const LawResult& law);
+
 /// What a reader must know of a solution.
 std::vector<std::string> law_warnings(const LawResult& law, double source_age);
 

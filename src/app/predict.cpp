@@ -111,7 +111,7 @@ std::string laws_summary(const scenario::Scenario& scenario,
         warnings.insert(warnings.end(), law.sky.warnings.begin(), law.sky.warnings.end());
     }
     files::Json::Array leaves_out;
-    for (const std::string& text : left_out()) {
+    for (const std::string& text : left_out(true)) {
         leaves_out.push_back(text);
     }
     const files::Json summary = files::Json::Object{{"aureole", version},
@@ -171,7 +171,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
         write_sky(law.sky, scenario, inputs, {hash, options.command, folder_of(law, alone), law.name}, folder,
                   context);
         result.warnings.insert(result.warnings.end(), law.sky.warnings.begin(), law.sky.warnings.end());
-        result.accuracy_missed = result.accuracy_missed || law.sky.accuracy_missed;
+        result.accuracy_missed = result.accuracy_missed || law.sky.accuracy_missed || !has_converged(law);
     }
     if (scenario.has_transport()) {
         write_law_tables(laws, hash, folder);

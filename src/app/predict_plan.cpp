@@ -3,6 +3,7 @@
 #include "aureole/app/predict.hpp"
 #include "aureole/base/constants.hpp"
 #include "aureole/grid/cells.hpp"
+#include "aureole/transport/read_scenario.hpp"
 
 #include <fmt/format.h>
 
@@ -134,6 +135,20 @@ double seconds(const Plan& plan, const Inputs& inputs, const scenario::Scenario&
     return media + (twice ? 1.5 : 1.0) * (emission + maps) + (twice ? 2 : 1) * heights;
 }
 
+/// Seconds of one core: the table of secondaries, and protons, electrons and positrons of each law.
+double transport_seconds(const Plan& plan, const transport::TransportSpec& spec) {
+    const auto cells = static_cast<double>(plan.stored_cells);
+    const double march = 1.3 * std::pow(cells / 3072, 1.15) * spec.bins_per_decade / 16;
+    double sum = 2;
+    for (const auto& law : spec.laws) {
+        const bool iterated = transport::depends_on_cosmic_rays(transport::checked_law(law.law));
+        const bool sought = law.anchor.kind != transport::AnchorSpec::Kind::absolute &&
+                            law.anchor.kind != transport::AnchorSpec::Kind::rate;
+        sum += march * (iterated ? 30 : 1) * (sought ? 4 : 1);
+    }
+    return sum;
+}
+
 } // namespace
 
 Plan plan(const scenario::Scenario& scenario, const RunContext& context) {
@@ -158,13 +173,32 @@ Plan plan(const scenario::Scenario& scenario, const RunContext& context) {
     }
     plan.total_bytes = others + plan.emissivity_bytes;
     plan.seconds = seconds(plan, inputs, scenario) / std::max(1, context.threads);
-    for (const Channel& channel : inputs.channels) {
-        if (channel.band == Band::radio) {
-            plan.files.push_back("maps/radio_" + file_label(channel) + ".fits");
+
+    std::vector<std::string> prefixes{""};
+    if (scenario.has_transport()) {
+        const auto spec = transport::read_transport(scenario);
+        plan.laws = spec.laws.size();
+        if (plan.laws > 1) {
+            prefixes.clear();
+            for (const auto& law : spec.laws) {
+                prefixes.push_back(law.name + "/");
+            }
         }
+        plan.seconds *= static_cast<double>(plan.laws);
+        plan.seconds += transport_seconds(plan, spec) / std::max(1, context.threads);
     }
-    if (plan.files.size() < inputs.channels.size()) {
-        plan.files.emplace_back("maps/gamma.fits");
+    for (const std::string& prefix : prefixes) {
+        bool gamma = false;
+        for (const Channel& channel : inputs.channels) {
+            if (channel.band == Band::radio) {
+                plan.files.push_back(prefix + "maps/radio_" + file_label(channel) + ".fits");
+            } else {
+                gamma = true;
+            }
+        }
+        if (gamma) {
+            plan.files.push_back(prefix + "maps/gamma.fits");
+        }
     }
     return plan;
 }
@@ -181,6 +215,9 @@ std::vector<std::string> Plan::lines() const {
         fmt::format("memory      about {}, of it {} emissivity", size(total_bytes), size(emissivity_bytes)),
         fmt::format("time        about {:.1f} s", seconds),
     };
+    if (laws > 1) {
+        lines.push_back(fmt::format("laws        {}, each in a folder of its own", laws));
+    }
     if (passes > 1) {
         lines.push_back(fmt::format(
             "passes      {}: the emissivity of all planes does not fit into memory at once", passes));

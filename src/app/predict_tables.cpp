@@ -163,7 +163,7 @@ Json summary_json(const scenario::Scenario& scenario,
         summary.emplace_back(std::string(name) + "_exponent", report::exponent_json((*band)->report));
     }
     summary.emplace_back("warnings", texts(warnings));
-    summary.emplace_back("leaves_out", texts(left_out()));
+    summary.emplace_back("leaves_out", texts(left_out(scenario.has_transport())));
     return summary;
 }
 
@@ -187,17 +187,25 @@ std::vector<EcsvColumn> heights_columns(const PredictedHeights& heights) {
     return tables ? std::move(tables->heights) : std::vector<EcsvColumn>{};
 }
 
-std::vector<std::string> left_out() {
-    return {
+std::vector<std::string> left_out(bool solved) {
+    std::vector<std::string> list{
         "Faraday rotation and depolarisation, thermal emission, absorption of any kind",
         "noise, missing spacings and calibration errors of a telescope: the maps are the full sky seen with "
         "the beam",
         "the angle between photons and electrons in inverse-Compton scattering: radiation is taken as "
         "isotropic",
         "structure below the size of a cell, other than the random field",
-        "secondary electrons and positrons, unless they are in the spectra given",
         "time: the galaxy is steady",
     };
+    if (solved) {
+        list.insert(list.end(),
+                    {"spiral arms and all that is not axisymmetric in the transport of particles; single "
+                     "sources; drifts; nuclei heavier than protons, other than by a factor",
+                     "reacceleration by waves that run both ways, and energy gains of any kind"});
+    } else {
+        list.emplace_back("secondary electrons and positrons, unless they are in the spectra given");
+    }
+    return list;
 }
 
 void write_tables(files::RunFolder& folder,

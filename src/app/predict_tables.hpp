@@ -37,7 +37,8 @@ std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
                                        const PredictedHeights& heights,
                                        const std::string& folder);
 
-/// What the predictions leave out, for the summary and the documentation.
-std::vector<std::string> left_out();
+/// What the predictions leave out, for the summary and the documentation. solved: the spectra come from the
+/// transport solver.
+std::vector<std::string> left_out(bool solved);
 
 } // namespace aureole::app

@@ -251,8 +251,9 @@ void add_transport_keys(std::vector<Key>& keys) {
                "diffusion across the ordered field over that along it; 1: the same in all directions"));
     add(boolean("transport.streaming", true,
                 "particles of self-confined laws drift at the Alfven speed and heat the gas by waves"));
-    add(quantity("transport.source_age", time, 0, infinity, "0 Myr",
-                 "time for which the sources have been on; 0: always, a steady state"));
+    add(quantity(
+        "transport.source_age", time, tiny, infinity, "10 Gyr",
+        "time for which the sources have been on; particles that are older on average cannot be steady"));
     add(choice("transport.secondary_model",
                {"isospin_kelner_2006", "isospin", "kelner_2006_direct", "kelner_2006"}, "isospin_kelner_2006",
                "parametrisation of p + p -> electrons and positrons"));

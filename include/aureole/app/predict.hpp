@@ -25,6 +25,7 @@ struct Plan {
     std::size_t emissivity_bytes = 0, total_bytes = 0; ///< the emissivity of one pass
     std::size_t room_for_emissivity = 0;               ///< bytes
     std::size_t passes = 1; ///< the spectra are read so many times, for a part of the channels each
+    std::size_t laws = 0;   ///< scattering laws to solve for
     double seconds = 0;
     std::vector<std::string> files;         ///< that would be written, relative to the folder
     std::vector<std::string> lines() const; ///< for the terminal
