@@ -6,6 +6,7 @@
 #include "aureole/base/constants.hpp"
 #include "aureole/grid/scenario_grid.hpp"
 #include "aureole/physics/star_formation.hpp"
+#include "aureole/transport/axisymmetric_media.hpp"
 #include "aureole/transport/sources.hpp"
 
 #include <fmt/format.h>
@@ -273,11 +274,8 @@ TransportSpec read_transport(const Scenario& scenario) {
                                 scenario.file().string()));
     }
     const auto file = grid::scenario_grid_file(scenario);
-    const grid::Grid grid = file ? file->grid : grid::scenario_grid(scenario);
-    if (grid.geometry != grid::Geometry::rz) {
-        problems.add(file ? "input.grid" : "grid.geometry",
-                     "found a Cartesian grid, expected \"RZ\" where spectra are solved for");
-    }
+    // Spectra for a Cartesian grid are solved for on rings around its axis.
+    const grid::Grid grid = axisymmetric_grid(file ? file->grid : grid::scenario_grid(scenario));
     spec.secondaries = scenario.boolean("transport.secondaries") && spec.electrons && spec.protons;
     spec.proton_sources = read_sources(scenario, "protons", grid, problems);
     spec.electron_sources = read_sources(scenario, "electrons", grid, problems);
