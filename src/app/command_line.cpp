@@ -8,6 +8,7 @@
 #include "aureole/app/inspect.hpp"
 #include "aureole/app/laws.hpp"
 #include "aureole/app/predict.hpp"
+#include "aureole/app/spectra_command.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/scenario/scenario.hpp"
 #include "aureole/scenario/starter.hpp"
@@ -51,10 +52,12 @@ void add_common(CLI::App& app, Common& common) {
         ->capture_default_str();
 }
 
-void add_compute(CLI::App& app, Common& common) {
+void add_compute(CLI::App& app, Common& common, bool limits_memory = true) {
     app.add_option("--threads", common.threads, "Threads to use; 0: all processors")
         ->check(CLI::Range(0, 4096));
-    app.add_option("--memory", common.memory, "Most working memory, such as \"2 GB\"");
+    if (limits_memory) {
+        app.add_option("--memory", common.memory, "Most working memory, such as \"2 GB\"");
+    }
     app.add_flag("--reproducible", common.reproducible, "Same bits on every x86-64 processor (slower)");
 }
 
@@ -129,6 +132,19 @@ int run_predict(const Arguments& arguments, const std::string& command, const Ru
     return result.accuracy_missed ? static_cast<int>(ErrorKind::accuracy) : 0;
 }
 
+int run_spectra(const Arguments& arguments, const std::string& command, const RunContext& context) {
+    const auto scenario = scenario::load(arguments.scenario_file, arguments.overrides);
+    const auto result =
+        write_spectra(scenario, {arguments.file, arguments.name, arguments.force, command}, context);
+    if (!arguments.common.quiet) {
+        print_lines(result.summary);
+    }
+    for (const std::string& warning : result.warnings) {
+        context.say(LogLevel::warning, warning);
+    }
+    return 0;
+}
+
 int run_scenario(const Arguments& arguments) {
     if (arguments.name.empty()) {
         for (const auto& starter : scenario::starters()) {
@@ -177,6 +193,18 @@ int run(int argc, char** argv) {
     add_compute(*predict_verb, arguments.common);
     add_common(*predict_verb, arguments.common);
 
+    auto* spectra_verb = app.add_subcommand(
+        "spectra", "Solve for the spectra under one scattering law and write them as a grid file");
+    spectra_verb->add_option("SCENARIO", arguments.scenario_file, "Scenario file (TOML)")->required();
+    spectra_verb->add_option("-o,--output", arguments.file, "Grid file to write (FITS)")->required();
+    spectra_verb->add_option("--law", arguments.name, "Name of the law; needed where there are several");
+    spectra_verb
+        ->add_option("--set", arguments.overrides, "Override a scenario key: KEY=VALUE, any number of times")
+        ->allow_extra_args(false);
+    spectra_verb->add_flag("--force", arguments.force, "Replace the file if it is there");
+    add_compute(*spectra_verb, arguments.common, false);
+    add_common(*spectra_verb, arguments.common);
+
     auto* scenario_verb =
         app.add_subcommand("scenario", "Print a complete starter scenario, or the list of them");
     scenario_verb->add_option("NAME", arguments.name, "Name of a starter scenario");
@@ -215,6 +243,8 @@ int run(int argc, char** argv) {
         int code = 0;
         if (predict_verb->parsed()) {
             code = run_predict(arguments, command, context);
+        } else if (spectra_verb->parsed()) {
+            code = run_spectra(arguments, command, context);
         } else if (scenario_verb->parsed()) {
             code = run_scenario(arguments);
         } else if (laws_verb->parsed()) {

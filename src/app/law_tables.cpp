@@ -319,19 +319,13 @@ bool has_converged(const LawResult& law) {
     return limiter && (!law.solution.confinement.needed || law.solution.confinement.converged);
 }
 
-std::vector<std::string> law_warnings(const LawResult& law, double source_age) {
+std::vector<std::string> law_warnings(const LawResult& law) {
     std::vector<std::string> warnings;
     const Solution& solution = law.solution;
     for (const auto& march : solution.marches) {
         if (march.limiter_not_converged > 0) {
             warnings.push_back(fmt::format("{}: {}: the flux limiter did not converge at {} momenta",
                                            law.name, march.name, march.limiter_not_converged));
-        }
-        constexpr double worth_saying = 0.01;
-        if (march.limited_energy > worth_saying) {
-            warnings.push_back(fmt::format(
-                "{}: {}: {:.2g} % of the energy is where diffusion would outrun the particles (flux limited)",
-                law.name, march.name, 100 * march.limited_energy));
         }
     }
     if (solution.confinement.needed && !solution.confinement.converged) {
@@ -345,12 +339,6 @@ std::vector<std::string> law_warnings(const LawResult& law, double source_age) {
             fmt::format("{}: self-confined solutions far above the Alfven speed are unstable in "
                         "time; the steady one may not be reached",
                         law.name));
-    }
-    if (solution.anchor.age[0] > source_age) {
-        warnings.push_back(
-            fmt::format("{}: protons of 1 GV are {:.2g} Gyr old on average at the reference place, "
-                        "older than the sources ({:.2g} Gyr): the galaxy is not steady",
-                        law.name, solution.anchor.age[0] / megayear / 1e3, source_age / megayear / 1e3));
     }
     return warnings;
 }

@@ -28,6 +28,6 @@ std::vector<std::string> law_lines(const std::vector<LawResult>& laws);
 bool has_converged(const LawResult& law);
 
 /// What a reader must know of a solution.
-std::vector<std::string> law_warnings(const LawResult& law, double source_age);
+std::vector<std::string> law_warnings(const LawResult& law);
 
 } // namespace aureole::app

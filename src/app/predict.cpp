@@ -1,5 +1,6 @@
 #include "aureole/app/predict.hpp"
 
+#include "law_shares.hpp"
 #include "law_tables.hpp"
 #include "predict_inputs.hpp"
 #include "predict_tables.hpp"
@@ -70,7 +71,9 @@ LawResult predict_law(const Stage& stage,
     result.sky =
         make_sky(stage.scenario, stage.inputs, stage.media,
                  with_solution(stage.stated, result.solution, stage.inputs.grid), stage.groups, context);
-    for (std::string& warning : law_warnings(result, problem.spec.source_age)) {
+    note_shares(result.sky, law.name, result.solution, problem.spec.source_age, stage.inputs, stage.media,
+                context);
+    for (std::string& warning : law_warnings(result)) {
         result.sky.warnings.push_back(std::move(warning));
     }
     return result;
