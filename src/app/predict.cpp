@@ -13,7 +13,6 @@
 #include "aureole/files/run_folder.hpp"
 #include "aureole/media/media.hpp"
 #include "aureole/spectra/file_source.hpp"
-#include "aureole/transport/read_scenario.hpp"
 #include "aureole/transport/solution_source.hpp"
 #include "aureole/transport/solve.hpp"
 #include "aureole/version.hpp"
@@ -81,7 +80,7 @@ LawResult predict_law(const Stage& stage,
 
 /// Law by law on all threads, or, where there are as many laws as threads, each law on a thread of its own.
 std::vector<LawResult> predict_laws(const Stage& stage, const RunContext& context) {
-    const auto spec = transport::read_transport(stage.scenario);
+    const auto spec = read_transport(stage.scenario, stage.inputs);
     const auto problem = transport::prepare_problem(spec, stage.inputs.grid, stage.media, context);
     std::vector<LawResult> results(spec.laws.size());
     const bool side_by_side =

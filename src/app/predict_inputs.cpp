@@ -1,9 +1,15 @@
 #include "predict_inputs.hpp"
 
+#include "aureole/base/constants.hpp"
 #include "aureole/base/error.hpp"
 #include "aureole/grid/scenario_grid.hpp"
+#include "aureole/physics/synchrotron.hpp"
+#include "aureole/transport/read_scenario.hpp"
 
 #include <fmt/format.h>
+
+#include <algorithm>
+#include <cmath>
 
 namespace aureole::app {
 
@@ -33,6 +39,28 @@ Inputs read_inputs(const scenario::Scenario& scenario) {
     inputs.processes = emission::processes(scenario);
     inputs.settings = map_settings(scenario, inputs.grid);
     return inputs;
+}
+
+transport::TransportSpec read_transport(const scenario::Scenario& scenario, const Inputs& inputs) {
+    auto spec = transport::read_transport(scenario);
+    const auto needed = [](const Channel& channel) {
+        constexpr double field = 1e-6; // G
+        const double gamma = std::sqrt(channel.to / (physics::synchrotron_critical_constant * field));
+        return channel.band == Band::radio ? gamma * constants::electron_rest_energy : channel.to;
+    };
+    const Channel& top =
+        *std::max_element(inputs.channels.begin(), inputs.channels.end(),
+                          [&](const Channel& a, const Channel& b) { return needed(a) < needed(b); });
+    constexpr double reserve = 10;
+    if (spec.energy_to < reserve * needed(top)) {
+        throw Error(
+            ErrorKind::scenario,
+            fmt::format("{}: transport.energy_to: found {:.3g} GeV, expected at least {:.3g} GeV, ten times "
+                        "the energy of particles that emit at {}",
+                        scenario.file().string(), spec.energy_to / constants::gigaelectronvolt,
+                        reserve * needed(top) / constants::gigaelectronvolt, emission::label(top)));
+    }
+    return spec;
 }
 
 std::size_t plane_count(const Inputs& inputs, const scenario::Scenario& scenario, const ChannelGroup& group) {

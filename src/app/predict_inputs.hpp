@@ -5,6 +5,7 @@
 #include "aureole/emission/emit.hpp"
 #include "aureole/grid/grid_file.hpp"
 #include "aureole/scenario/scenario.hpp"
+#include "aureole/transport/spec.hpp"
 
 #include <cstddef>
 #include <optional>
@@ -28,6 +29,11 @@ Inputs read_inputs(const scenario::Scenario& scenario);
 struct ChannelGroup {
     std::size_t first = 0, count = 0;
 };
+
+/// What the scenario asks of the transport solver. Throws as transport::read_transport(), and Error(scenario)
+/// where transport.energy_to is less than ten times the energy that a channel needs: the photon's own, or
+/// that of electrons whose critical frequency in 1 uG is the channel's.
+transport::TransportSpec read_transport(const scenario::Scenario& scenario, const Inputs& inputs);
 
 /// Number of planes that a group of channels makes, before the media are known: an upper bound where
 /// processes are kept apart.

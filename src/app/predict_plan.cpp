@@ -176,7 +176,7 @@ Plan plan(const scenario::Scenario& scenario, const RunContext& context) {
 
     std::vector<std::string> prefixes{""};
     if (scenario.has_transport()) {
-        const auto spec = transport::read_transport(scenario);
+        const auto spec = read_transport(scenario, inputs);
         plan.laws = spec.laws.size();
         if (plan.laws > 1) {
             prefixes.clear();
