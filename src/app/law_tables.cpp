@@ -171,34 +171,89 @@ double middle(const std::vector<double>& edges, std::size_t cell) {
     return 0.5 * (edges[cell] + edges[cell + 1]);
 }
 
-std::vector<EcsvColumn> pressure_table(const std::vector<LawResult>& laws) {
+/// Node of the spectra nearest to a rigidity of 1 GV.
+std::size_t node_of_1gv(const Spectra& protons) {
+    const double wanted = transport::empirical_rigidity() * constants::elementary_charge /
+                          constants::speed_of_light; // momentum
+    const auto above = std::lower_bound(protons.momentum.begin(), protons.momentum.end(), wanted);
+    const auto place = static_cast<std::size_t>(above - protons.momentum.begin());
+    return std::min(place, protons.momentum.size() - 1);
+}
+
+/// What is known of a cell beside its pressure.
+struct CellState {
+    double pressure = 0;
+    double free_path = nothing; ///< cm, of protons of 1 GV
+    double gas_pressure = nothing;
+};
+
+CellState state_of(const Solution& solution, const media::Media& media, bool own_grid, std::size_t cell) {
+    CellState state;
+    state.pressure = solution.pressure[cell];
+    if (solution.protons && !solution.protons->scattering_rate.empty()) {
+        const Spectra& protons = *solution.protons;
+        const std::size_t node = node_of_1gv(protons);
+        const double rate = static_cast<double>(protons.scattering_rate[cell * protons.energy.size() + node]);
+        const auto particle =
+            transport::particle_of_momentum(protons.momentum[node], constants::proton_rest_energy);
+        state.free_path = rate > 0 ? particle.speed / rate : nothing;
+    }
+    const auto& gas = media.gas;
+    if (own_grid && !gas.temperature.empty() && (!gas.electrons.empty() || !gas.hii.empty())) {
+        const auto of = [&](const std::vector<float>& values) {
+            return values.empty() ? 0.0 : static_cast<double>(values[cell]);
+        };
+        const double particles = of(gas.electrons.empty() ? gas.hii : gas.electrons) + of(gas.hii);
+        state.gas_pressure = particles * constants::boltzmann * of(gas.temperature);
+    }
+    return state;
+}
+
+std::vector<EcsvColumn>
+pressure_table(const std::vector<LawResult>& laws, const grid::Grid& grid, const media::Media& media) {
     std::vector<std::string> name, axis;
-    std::vector<double> radius, height, pressure;
-    const auto add = [&](const LawResult& law, const char* along, std::size_t i, std::size_t k) {
-        const grid::Grid& grid = law.solution.grid;
-        name.push_back(law.name);
-        axis.emplace_back(along);
-        radius.push_back(middle(grid.x, i) / constants::kiloparsec);
-        height.push_back(middle(grid.z, k) / constants::kiloparsec);
-        pressure.push_back(law.solution.pressure[i + grid.nx() * k] / constants::electronvolt);
+    std::vector<double> radius, height, pressure, path, knudsen, over_gas;
+    // Along a line of cells first, first + stride, ...; `edges` are those of its axis.
+    const auto add = [&](const LawResult& law, const char* along, const std::vector<double>& edges,
+                         std::size_t first, std::size_t stride) {
+        const grid::Grid& own = law.solution.grid;
+        std::vector<CellState> states;
+        for (std::size_t n = 0; n + 1 < edges.size(); ++n) {
+            states.push_back(state_of(law.solution, media, own == grid, first + n * stride));
+        }
+        for (std::size_t n = 0; n < states.size(); ++n) {
+            const std::size_t cell = first + n * stride;
+            const std::size_t before = n > 0 ? n - 1 : n;
+            const std::size_t after = std::min(n + 1, states.size() - 1);
+            const double slope = std::log(states[after].pressure / states[before].pressure) /
+                                 (middle(edges, after) - middle(edges, before));
+            name.push_back(law.name);
+            axis.emplace_back(along);
+            radius.push_back(middle(own.x, cell % own.nx()) / constants::kiloparsec);
+            height.push_back(middle(own.z, cell / own.nx()) / constants::kiloparsec);
+            pressure.push_back(states[n].pressure / constants::electronvolt);
+            path.push_back(states[n].free_path / constants::parsec);
+            knudsen.push_back(states[n].free_path * std::abs(slope));
+            over_gas.push_back(states[n].pressure / states[n].gas_pressure);
+        }
     };
     for (const LawResult& law : laws) {
-        const grid::Grid& grid = law.solution.grid;
+        const grid::Grid& own = law.solution.grid;
         const std::size_t place =
-            cell_at(grid, law.solution.anchor.radius, std::max(law.solution.anchor.height, 0.0));
-        for (std::size_t i = 0; i < grid.nx(); ++i) {
-            add(law, "radius", i, place / grid.nx());
-        }
-        for (std::size_t k = 0; k < grid.nz(); ++k) {
-            add(law, "height", place % grid.nx(), k);
-        }
+            cell_at(own, law.solution.anchor.radius, std::max(law.solution.anchor.height, 0.0));
+        add(law, "radius", own.x, place - place % own.nx(), 1);
+        add(law, "height", own.z, place % own.nx(), own.nx());
     }
     return {{"law", "", "", name},
             {"axis", "",
              "radius: along R at the height of the reference place; height: along z at its radius", axis},
             {"R", "kpc", "centre of the cell", radius},
             {"z", "kpc", "centre of the cell", height},
-            {"pressure", "eV cm-3", "of cosmic-ray protons", pressure}};
+            {"pressure", "eV cm-3", "of cosmic-ray protons", pressure},
+            {"free_path", "pc", "of protons of 1 GV", path},
+            {"free_path_over_scale", "",
+             "free path over the scale on which the pressure changes along the axis", knudsen},
+            {"over_gas_pressure", "", "where a gas temperature is given", over_gas}};
 }
 
 std::vector<EcsvColumn> spectra_table(const std::vector<LawResult>& laws) {
@@ -262,11 +317,15 @@ std::vector<EcsvColumn> heights_table(const std::vector<LawResult>& laws) {
 
 } // namespace
 
-void write_law_tables(const std::vector<LawResult>& laws, const std::string& hash, files::RunFolder& folder) {
+void write_law_tables(const std::vector<LawResult>& laws,
+                      const grid::Grid& grid,
+                      const media::Media& media,
+                      const std::string& hash,
+                      files::RunFolder& folder) {
     const std::vector<std::pair<std::string, std::string>> meta{{"scenario_hash", hash}};
     folder.write_text("tables/laws.ecsv", files::ecsv_text(laws_table(laws), meta));
     folder.write_text("tables/budgets.ecsv", files::ecsv_text(budgets_table(laws), meta));
-    folder.write_text("tables/pressure.ecsv", files::ecsv_text(pressure_table(laws), meta));
+    folder.write_text("tables/pressure.ecsv", files::ecsv_text(pressure_table(laws, grid, media), meta));
     folder.write_text("tables/local_spectra.ecsv", files::ecsv_text(spectra_table(laws), meta));
     const auto heights = heights_table(laws);
     if (laws.size() > 1 && !heights.empty()) {

@@ -19,7 +19,11 @@ struct LawResult {
 
 /// laws.ecsv, budgets.ecsv, pressure.ecsv, local_spectra.ecsv and, for several laws, law_heights.ecsv
 /// (docs/results.md), side by side in tables/.
-void write_law_tables(const std::vector<LawResult>& laws, const std::string& hash, files::RunFolder& folder);
+void write_law_tables(const std::vector<LawResult>& laws,
+                      const grid::Grid& grid,
+                      const media::Media& media,
+                      const std::string& hash,
+                      files::RunFolder& folder);
 
 /// The same for the terminal: one line a law, and where the energy went.
 std::vector<std::string> law_lines(const std::vector<LawResult>& laws);

@@ -176,7 +176,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
         result.accuracy_missed = result.accuracy_missed || law.sky.accuracy_missed || !has_converged(law);
     }
     if (scenario.has_transport()) {
-        write_law_tables(laws, hash, folder);
+        write_law_tables(laws, inputs.grid, media, hash, folder);
         if (!alone) {
             folder.write_text("summary.json", laws_summary(scenario, laws, hash, options.command));
         }
