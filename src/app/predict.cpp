@@ -8,6 +8,7 @@
 
 #include "aureole/base/error.hpp"
 #include "aureole/base/parallel.hpp"
+#include "aureole/base/progress.hpp"
 #include "aureole/files/hash.hpp"
 #include "aureole/files/json.hpp"
 #include "aureole/files/run_folder.hpp"
@@ -88,8 +89,15 @@ std::vector<LawResult> predict_laws(const Stage& stage, const RunContext& contex
     RunContext inner = context;
     RunContext outer = context;
     (side_by_side ? inner : outer).threads = 1;
+    if (side_by_side) {
+        inner.progress = {}; // of several laws at once would be mixed up
+    }
+    Progress progress(context, "scattering laws", side_by_side ? spec.laws.size() : 0);
     for_each_block(outer, spec.laws.size(), [&](std::size_t law) {
         results[law] = predict_law(stage, problem, spec.laws[law], inner);
+        if (side_by_side) {
+            progress.step();
+        }
     });
     return results;
 }
