@@ -79,16 +79,19 @@ Evaluation evaluate(const Galaxy& galaxy,
 Evaluation evaluate_coarser(const Galaxy& galaxy,
                             const std::vector<emission::Channel>& channels,
                             const Evaluation& fine,
+                            const std::vector<spectra::Source>* sources,
                             const RunContext& context) {
     const auto grid = grid::coarsened(galaxy.grid);
     const auto media = media::coarsened(galaxy.media, galaxy.grid, context);
-    const auto sources = spectra::coarsened(galaxy.sources, galaxy.grid);
+    const auto averages =
+        sources == nullptr ? spectra::coarsened(galaxy.sources, galaxy.grid) : std::vector<spectra::Source>{};
     emission::Processes processes = galaxy.processes;
     processes.sectors = std::max<std::size_t>(4, processes.sectors / 2);
     // The difference of the maps need not be known better than to a few per cent.
     MapSettings settings = galaxy.settings;
     settings.render.tolerance *= 3;
-    return evaluate({grid, media, sources, processes, settings}, channels, fine.groups, context, &fine);
+    return evaluate({grid, media, sources == nullptr ? averages : *sources, processes, settings}, channels,
+                    fine.groups, context, &fine);
 }
 
 } // namespace aureole::app

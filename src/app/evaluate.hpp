@@ -37,10 +37,12 @@ Evaluation evaluate(const Galaxy& galaxy,
                     const RunContext& context,
                     const Evaluation* alike = nullptr);
 
-/// The same galaxy on cells twice as wide, with half the sectors.
+/// The same galaxy on cells twice as wide, with half the sectors. sources: on those cells; null: averages of
+/// the galaxy's.
 Evaluation evaluate_coarser(const Galaxy& galaxy,
                             const std::vector<emission::Channel>& channels,
                             const Evaluation& fine,
+                            const std::vector<spectra::Source>* sources,
                             const RunContext& context);
 
 } // namespace aureole::app

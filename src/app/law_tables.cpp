@@ -10,6 +10,7 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <string_view>
 
 namespace aureole::app {
 
@@ -58,6 +59,7 @@ const MapProduct* near_21_cm(const Sky& sky) {
 
 std::vector<EcsvColumn> laws_table(const std::vector<LawResult>& laws) {
     std::vector<std::string> name, anchor;
+    std::vector<double> density_error, gamma_error;
     std::vector<double> factor, rate, over, density, gamma, radio, frequency, power, protons, electrons;
     std::vector<std::vector<double>> grammage(3), age(3), residence(3);
     const auto left = [](const Solution& solution, const char* kind) {
@@ -81,6 +83,11 @@ std::vector<EcsvColumn> laws_table(const std::vector<LawResult>& laws) {
         over.push_back(report.over_empirical);
         density.push_back(report.energy_density / constants::electronvolt);
         gamma.push_back(report.gamma_luminosity);
+        density_error.push_back(law.coarse ? std::abs(law.coarse->energy_density - report.energy_density) /
+                                                 constants::electronvolt
+                                           : nothing);
+        gamma_error.push_back(law.coarse ? std::abs(law.coarse->gamma_luminosity - report.gamma_luminosity)
+                                         : nothing);
         power.push_back(report.proton_power);
         protons.push_back(left(law.solution, "protons"));
         electrons.push_back(left(law.solution, "electrons"));
@@ -100,7 +107,9 @@ std::vector<EcsvColumn> laws_table(const std::vector<LawResult>& laws) {
         {"rate", "s-1", "scattering rate at 1 GV at the reference place", rate},
         {"over_empirical", "", "that of the law as it stood over 1e-9 s-1", over},
         {"energy_density", "eV cm-3", "cosmic-ray protons at the reference place", density},
+        {"energy_density_error", "eV cm-3", "numerical: its change on cells twice as wide", density_error},
         {"gamma_luminosity", "erg s-1", "pion decay, 0.1 to 100 GeV, whole galaxy", gamma},
+        {"gamma_luminosity_error", "erg s-1", "numerical: its change on cells twice as wide", gamma_error},
         {"proton_power", "erg s-1", "kinetic energy injected", power},
         {"protons_escaped", "", "share of the injected energy", protons},
         {"electrons_escaped", "", "share of the injected energy", electrons},
@@ -315,6 +324,91 @@ std::vector<EcsvColumn> heights_table(const std::vector<LawResult>& laws) {
     return all;
 }
 
+/// A column of the energy budget on the terminal: processes that start alike.
+struct ShareGroup {
+    std::string_view title;
+    std::vector<std::string_view> starts;
+};
+
+/// The last group takes whatever no other names.
+std::vector<ShareGroup> share_groups() {
+    return {{"synch.", {"synchrotron"}},
+            {"IC", {"inverse compton"}},
+            {"brems.", {"bremsstrahlung"}},
+            {"ionis.", {"ionisation", "coulomb"}},
+            {"pions", {"pions", "catastrophic"}},
+            {"adiab.", {"adiabatic"}},
+            {"escape", {"escape"}},
+            {"cooled", {"cooled"}},
+            {"other", {""}}};
+}
+
+/// [groups] share of the injected power; empty where nothing was injected.
+std::vector<double> group_shares(const KindBudget& kind, const std::vector<ShareGroup>& groups) {
+    const double injected = kind.budget.injected.energy;
+    if (!(injected > 0)) {
+        return {};
+    }
+    std::vector<double> shares(groups.size(), 0);
+    visit_budget(kind, [&](const std::string& process, double power) {
+        const auto group = std::find_if(groups.begin(), groups.end(), [&](const ShareGroup& one) {
+            return std::any_of(one.starts.begin(), one.starts.end(),
+                               [&](std::string_view start) { return process.starts_with(start); });
+        });
+        shares[static_cast<std::size_t>(group - groups.begin())] += power / injected;
+    });
+    return shares;
+}
+
+/// One line per law and kind of particle, one column per group that has anything to say.
+std::vector<std::string> share_lines(const std::vector<LawResult>& laws, std::size_t widest) {
+    constexpr double worth_saying = 5e-4;
+    const auto groups = share_groups();
+    std::vector<bool> used(groups.size(), false);
+    for (const LawResult& law : laws) {
+        for (const KindBudget& kind : law.solution.budgets) {
+            const auto shares = group_shares(kind, groups);
+            for (std::size_t g = 0; g < shares.size(); ++g) {
+                used[g] = used[g] || std::abs(shares[g]) > worth_saying;
+            }
+        }
+    }
+    std::string head = fmt::format("{:<{}} {:<19} {:>9}", "law", widest, "particles", "erg s-1");
+    for (std::size_t g = 0; g < groups.size(); ++g) {
+        head += used[g] ? fmt::format(" {:>6}", groups[g].title) : "";
+    }
+    std::vector<std::string> lines{"Where the energy went: injected power and what took it, in % of it",
+                                   head};
+    for (const LawResult& law : laws) {
+        for (const KindBudget& kind : law.solution.budgets) {
+            const auto shares = group_shares(kind, groups);
+            std::string line = fmt::format("{:<{}} {:<19} {:>9.3g}", law.name, widest, kind.name,
+                                           kind.budget.injected.energy);
+            for (std::size_t g = 0; g < shares.size(); ++g) {
+                if (used[g]) {
+                    line += std::abs(shares[g]) > worth_saying ? fmt::format(" {:>6.1f}", 100 * shares[g])
+                                                               : fmt::format(" {:>6}", "-");
+                }
+            }
+            lines.push_back(line);
+        }
+    }
+    lines.emplace_back(
+        "ionis.: with Coulomb losses; cooled: below the lowest energy; one by one in tables/budgets.ecsv");
+    return lines;
+}
+
+/// Where the quantities of the laws hold.
+std::string reference_place(const std::vector<LawResult>& laws) {
+    const auto& first = laws.front().solution.anchor;
+    const bool same = std::all_of(laws.begin(), laws.end(), [&](const LawResult& law) {
+        return law.solution.anchor.radius == first.radius && law.solution.anchor.height == first.height;
+    });
+    return same ? fmt::format("at R = {:.3g} kpc, z = {:.3g} kpc", first.radius / constants::kiloparsec,
+                              first.height / constants::kiloparsec)
+                : std::string("at the reference place of each law");
+}
+
 } // namespace
 
 void write_law_tables(const std::vector<LawResult>& laws,
@@ -334,40 +428,30 @@ void write_law_tables(const std::vector<LawResult>& laws,
 }
 
 std::vector<std::string> law_lines(const std::vector<LawResult>& laws) {
+    std::size_t widest = 3;
+    for (const LawResult& law : laws) {
+        widest = std::max(widest, law.name.size());
+    }
     std::vector<std::string> lines{
         "Scattering laws",
-        fmt::format("{:<16} {:>10} {:>11} {:>11} {:>12} {:>12} {:>9} {:>10}", "law", "factor", "nu/s-1",
-                    "nu/1e-9 s-1", "e_CR/eV cm-3", "X(10GV)/gcm-2", "age/Myr", "L_gamma"),
+        fmt::format("{:<{}} {:>9} {:>9} {:>11} {:>12} {:>9} {:>8} {:>15}", "law", widest, "factor", "nu/s-1",
+                    "stated/1e-9", "e_CR/eV cm-3", "X/g cm-2", "age/Myr", "L_gamma/erg s-1"),
     };
     for (const LawResult& law : laws) {
         const auto& report = law.solution.anchor;
         lines.push_back(
-            fmt::format("{:<16} {:>10.4g} {:>11.3g} {:>11.3g} {:>12.3g} {:>13.3g} {:>9.3g} {:>10.3g}",
-                        law.name, report.factor, report.rate, report.over_empirical,
+            fmt::format("{:<{}} {:>9.4g} {:>9.3g} {:>11.3g} {:>12.3g} {:>9.3g} {:>8.3g} {:>15.3g}", law.name,
+                        widest, report.factor, report.rate, report.over_empirical,
                         report.energy_density / constants::electronvolt, report.grammage[1],
                         report.age[1] / megayear, report.gamma_luminosity));
     }
     lines.push_back(
-        fmt::format("at R = {:.3g} kpc, z = {:.3g} kpc; nu at 1 GV as used, and as the law stood over "
-                    "the empirical rate; age at 10 GV; L_gamma in erg/s, 0.1 to 100 GeV",
-                    laws.front().solution.anchor.radius / constants::kiloparsec,
-                    laws.front().solution.anchor.height / constants::kiloparsec));
+        fmt::format("Protons {}; nu: at 1 GV, as used; stated: nu before the factor, over 1e-9 s-1;",
+                    reference_place(laws)));
+    lines.emplace_back("X, age: at 10 GV; L_gamma: of pion decay, 0.1 to 100 GeV, whole galaxy");
     lines.emplace_back("");
-    lines.emplace_back("Where the energy went");
-    for (const LawResult& law : laws) {
-        for (const KindBudget& kind : law.solution.budgets) {
-            const double injected = kind.budget.injected.energy;
-            std::string parts;
-            visit_budget(kind, [&](const std::string& process, double power) {
-                if (injected > 0 && power / injected > 0.005) {
-                    parts += fmt::format("{}{} {:.0f} %", parts.empty() ? "" : ", ", process,
-                                         100 * power / injected);
-                }
-            });
-            lines.push_back(
-                fmt::format("{:<16} {:<20} {:.3g} erg/s: {}", law.name, kind.name, injected, parts));
-        }
-    }
+    const auto shares = share_lines(laws, widest);
+    lines.insert(lines.end(), shares.begin(), shares.end());
     return lines;
 }
 

@@ -5,6 +5,7 @@
 #include "aureole/files/ecsv.hpp"
 #include "aureole/transport/solve.hpp"
 
+#include <optional>
 #include <string>
 #include <vector>
 
@@ -14,6 +15,7 @@ namespace aureole::app {
 struct LawResult {
     std::string name;
     transport::Solution solution;
+    std::optional<transport::AnchorReport> coarse; ///< of the solution on cells twice as wide
     Sky sky;
 };
 

@@ -22,6 +22,7 @@
 
 #include <algorithm>
 #include <chrono>
+#include <optional>
 
 namespace aureole::app {
 
@@ -50,6 +51,13 @@ with_solution(std::vector<Source> stated, const transport::Solution& solution, c
     return stated;
 }
 
+/// What is solved again on cells twice as wide.
+struct CoarseStage {
+    grid::Grid grid;
+    std::vector<Source> stated;
+    transport::Problem problem;
+};
+
 /// Everything that the laws of a scenario share.
 struct Stage {
     const scenario::Scenario& scenario;
@@ -61,6 +69,7 @@ struct Stage {
 
 LawResult predict_law(const Stage& stage,
                       const transport::Problem& problem,
+                      const std::optional<CoarseStage>& coarse,
                       const transport::NamedLaw& law,
                       const RunContext& context) {
     auto since = Clock::now();
@@ -68,9 +77,16 @@ LawResult predict_law(const Stage& stage,
     result.name = law.name;
     result.solution = transport::solve(problem, law, context);
     note_timing(context, law.name + ": transport", since);
-    result.sky =
-        make_sky(stage.scenario, stage.inputs, stage.media,
-                 with_solution(stage.stated, result.solution, stage.inputs.grid), stage.groups, context);
+    std::vector<Source> coarse_sources;
+    if (coarse) {
+        const auto solution = transport::solve(coarse->problem, law, context);
+        result.coarse = solution.anchor;
+        coarse_sources = with_solution(coarse->stated, solution, coarse->grid);
+        note_timing(context, law.name + ": transport on coarser cells", since);
+    }
+    result.sky = make_sky(stage.scenario, stage.inputs, stage.media,
+                          with_solution(stage.stated, result.solution, stage.inputs.grid),
+                          coarse ? &coarse_sources : nullptr, stage.groups, context);
     note_shares(result.sky, law.name, result.solution, problem.spec.source_age, stage.inputs, stage.media,
                 context);
     for (std::string& warning : law_warnings(result)) {
@@ -84,6 +100,13 @@ std::vector<LawResult> predict_laws(const Stage& stage, const RunContext& contex
     const auto spec = read_transport(stage.scenario, stage.inputs);
     const auto problem = transport::prepare_problem(spec, stage.inputs.grid, stage.media, context);
     std::vector<LawResult> results(spec.laws.size());
+    std::optional<CoarseStage> coarse;
+    if (stage.scenario.boolean("accuracy.estimate")) {
+        const auto grid = grid::coarsened(stage.inputs.grid);
+        const auto media = media::coarsened(stage.media, stage.inputs.grid, context);
+        coarse = CoarseStage{grid, spectra::coarsened(stage.stated, stage.inputs.grid),
+                             transport::prepare_problem(spec, grid, media, context)};
+    }
     const bool side_by_side =
         context.threads > 1 && spec.laws.size() >= static_cast<std::size_t>(context.threads);
     RunContext inner = context;
@@ -94,7 +117,7 @@ std::vector<LawResult> predict_laws(const Stage& stage, const RunContext& contex
     }
     Progress progress(context, "scattering laws", side_by_side ? spec.laws.size() : 0);
     for_each_block(outer, spec.laws.size(), [&](std::size_t law) {
-        results[law] = predict_law(stage, problem, spec.laws[law], inner);
+        results[law] = predict_law(stage, problem, coarse, spec.laws[law], inner);
         if (side_by_side) {
             progress.step();
         }
@@ -166,7 +189,7 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
     if (scenario.has_transport()) {
         laws = predict_laws(stage, context);
     } else {
-        laws.push_back({"", {}, make_sky(scenario, inputs, media, stated, groups, context)});
+        laws.push_back({"", {}, {}, make_sky(scenario, inputs, media, stated, nullptr, groups, context)});
     }
     since = Clock::now();
 

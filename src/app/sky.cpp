@@ -99,6 +99,7 @@ Sky make_sky(const scenario::Scenario& scenario,
              const Inputs& inputs,
              const media::Media& media,
              const std::vector<spectra::Source>& sources,
+             const std::vector<spectra::Source>* coarse_sources,
              const std::vector<ChannelGroup>& groups,
              const RunContext& context) {
     auto since = std::chrono::steady_clock::now();
@@ -115,7 +116,7 @@ Sky make_sky(const scenario::Scenario& scenario,
     say("emission and maps");
     std::vector<MapProduct> coarse;
     if (scenario.boolean("accuracy.estimate")) {
-        coarse = evaluate_coarser(galaxy, inputs.channels, sky.fine, context).products;
+        coarse = evaluate_coarser(galaxy, inputs.channels, sky.fine, coarse_sources, context).products;
         estimate_errors(products, coarse);
         say("numerical error");
     }

@@ -22,10 +22,13 @@ struct Sky {
     bool accuracy_missed = false; ///< a conservation check failed
 };
 
+/// coarse: spectra on grid::coarsened(inputs.grid) for the estimate of numerical errors, on the same
+/// energies; null: averages of the sources.
 Sky make_sky(const scenario::Scenario& scenario,
              const Inputs& inputs,
              const media::Media& media,
              const std::vector<spectra::Source>& sources,
+             const std::vector<spectra::Source>* coarse,
              const std::vector<ChannelGroup>& groups,
              const RunContext& context);
 

@@ -155,10 +155,15 @@ void add_protons(const Solution& solution, std::vector<std::string>& lines) {
     row("grammage there, g/cm2", anchor.grammage, 1);
     row("age there, Myr", anchor.age, megayear);
     row("residence, Myr", anchor.residence, megayear);
+    lines.push_back(fmt::format("Gamma rays of the galaxy, 0.1 to 100 GeV from pion decay: {:.4g} erg/s,",
+                                anchor.gamma_luminosity));
     lines.push_back(
-        fmt::format("Gamma rays, 0.1 to 100 GeV from pion decay: {:.4g} erg/s, {:.3g} of the power "
-                    "of the protons",
-                    anchor.gamma_luminosity, anchor.gamma_luminosity / anchor.proton_power));
+        fmt::format("  {:.3g} of the power of the protons", anchor.gamma_luminosity / anchor.proton_power));
+}
+
+/// "inverse compton: dust" counts as "inverse compton".
+std::string process_group(const std::string& process) {
+    return process.substr(0, process.find(": "));
 }
 
 /// A row for each way that energy went, a column for each kind.
@@ -169,18 +174,26 @@ class BudgetTable {
     std::vector<std::string> lines() {
         line("Power, erg/s", [](const KindBudget& kind) { return kind.name; });
         numbers("injected", [](const KindBudget& kind) { return kind.budget.injected.energy; });
-        for (const std::string& process : names([](const KindBudget& kind) { return kind.processes; })) {
-            numbers("  " + process,
-                    [&](const KindBudget& kind) { return part(kind.processes, kind.budget.lost, process); });
+        for (const std::string& process : names([](const KindBudget& kind) {
+                 auto groups = kind.processes;
+                 std::transform(groups.begin(), groups.end(), groups.begin(), process_group);
+                 return groups;
+             })) {
+            numbers("  " + process, [&](const KindBudget& kind) {
+                double sum = 0;
+                for (std::size_t i = 0; i < kind.processes.size(); ++i) {
+                    sum += process_group(kind.processes[i]) == process ? kind.budget.lost[i] : 0;
+                }
+                return sum;
+            });
         }
         numbers("  adiabatic", [](const KindBudget& kind) { return kind.budget.adiabatic; });
         for (const std::string& side : names([](const KindBudget& kind) { return kind.sides; })) {
             numbers("  escaped, " + side, [&](const KindBudget& kind) {
-                std::vector<double> energies;
-                for (const transport::Rate& rate : kind.budget.escaped) {
-                    energies.push_back(rate.energy);
-                }
-                return part(kind.sides, energies, side);
+                const auto found = std::find(kind.sides.begin(), kind.sides.end(), side);
+                return found == kind.sides.end()
+                           ? 0
+                           : kind.budget.escaped[static_cast<std::size_t>(found - kind.sides.begin())].energy;
             });
         }
         numbers("  catastrophic", [](const KindBudget& kind) { return kind.budget.catastrophic.energy; });
@@ -204,14 +217,8 @@ class BudgetTable {
         return all;
     }
 
-    static double
-    part(const std::vector<std::string>& names, const std::vector<double>& values, const std::string& name) {
-        const auto found = std::find(names.begin(), names.end(), name);
-        return found == names.end() ? 0 : values[static_cast<std::size_t>(found - names.begin())];
-    }
-
     template <class Text> void line(const std::string& head, const Text& text) {
-        std::string row = fmt::format("{:<22}", head);
+        std::string row = fmt::format("{:<23}", head);
         for (const KindBudget& kind : kinds_) {
             std::string cell = text(kind);
             cell = cell == "secondary electrons" ? "secondary e-" : cell;
@@ -262,7 +269,8 @@ std::vector<std::string> warnings_of(const Solution& solution, double source_age
             "be reached");
     }
     for (const KindBudget& kind : solution.budgets) {
-        if (kind.inside < 1 - worth_saying) {
+        constexpr double much = 0.05;
+        if (kind.power > 0 && kind.inside < 1 - much) {
             warn(fmt::format("{}: {:.2g} % of a source lies outside the grid; all its power goes into what "
                              "lies inside",
                              kind.name, 100 * (1 - kind.inside)));

@@ -247,15 +247,17 @@ std::vector<files::Card> solver_cards(const SolvedGalaxy& galaxy) {
         {"PERPPAR", spec.perpendicular, "diffusion across over along the field"},
         {"WIND", spec.wind.kind, ""},
         {"SECONDAR", spec.secondaries, "electrons and positrons made by protons"},
-        {"SRCAGE", spec.source_age / (1e6 * constants::year), "[Myr] age of the sources; 0: steady"},
-        {"CONFITER", static_cast<long>(solution.confinement.change.size()), "rounds of waves and spectra"},
-        {"CONFLAST", solution.confinement.change.empty() ? 0.0 : solution.confinement.change.back(),
-         "rms of the last change of ln density"},
+        {"SRCAGE", spec.source_age / (1e6 * constants::year), "[Myr] for which the sources have been on"},
         {"LIMOPEN", limiter_open, "momenta at which the limiter did not converge"},
         {"LIMITED", limited, "greatest part of energy that is flux limited"},
         {"RESIDUAL", residual, "worst of the linear systems"},
         {"BUDGET", worst_defect(solution), "worst part of power not accounted for"}};
     cards.insert(cards.end(), more.begin(), more.end());
+    const auto& change = solution.confinement.change;
+    if (!change.empty()) {
+        cards.push_back({"CONFITER", static_cast<long>(change.size()), "rounds of waves and spectra"});
+        cards.push_back({"CONFLAST", change.back(), "rms of the last change of ln density"});
+    }
     return cards;
 }
 

@@ -153,7 +153,7 @@ class LawReader {
                 continue;
             }
             parts_.insert(part);
-            if (scenario_.is_set(key_of(part, "anchor"))) {
+            if (scenario_.text(key_of(part, "anchor")) != "absolute") {
                 problems_.add(
                     key_of(part, "anchor"),
                     fmt::format("found on a law that \"{}\" is made of, expected on that: an anchor "
@@ -215,7 +215,10 @@ AnchorSpec read_anchor(const Scenario& scenario,
     for (const AnchorKey& row : anchor_keys) {
         const std::string key = key_of(name, row.key);
         if (kind != row.name) {
-            if (scenario.is_set(key)) {
+            // A value that is the default says nothing: it stands in the scenario that a run leaves behind.
+            const bool is_default =
+                row.kind == AnchorSpec::Kind::rate && scenario.quantity(key) == empirical_rate;
+            if (scenario.is_set(key) && !is_default) {
                 problems.add(
                     key, fmt::format("found beside anchor = \"{}\", expected \"{}\" there", kind, row.name));
             }
