@@ -6,7 +6,7 @@ _aureole() {
     COMPREPLY=()
     for ((i = 1; i < COMP_CWORD; i++)); do
         case ${COMP_WORDS[i]} in
-        predict | scenario | laws | inspect | heights)
+        predict | spectra | scenario | laws | inspect | heights)
             verb=${COMP_WORDS[i]}
             break
             ;;
@@ -17,6 +17,7 @@ _aureole() {
     local options
     case $verb in
     predict) options="--output --set --force --dry-run $compute $talk" ;;
+    spectra) options="--output --law --set --force --threads --reproducible $talk" ;;
     scenario | laws) options='--help' ;;
     inspect) options="$talk" ;;
     heights)
@@ -34,6 +35,7 @@ _aureole() {
     --output | -o)
         compopt -o filenames 2>/dev/null
         COMPREPLY=($(compgen -d -- "$word"))
+        [[ $verb == spectra ]] && COMPREPLY=($(compgen -f -- "$word"))
         return
         ;;
     --mask)
@@ -61,7 +63,7 @@ _aureole() {
         COMPREPLY=($(compgen -W 'both each' -- "$word"))
         return
         ;;
-    --set | --threads | --memory | --centre | --center | --position-angle | --inclination | --distance | \
+    --law | --set | --threads | --memory | --centre | --center | --position-angle | --inclination | --distance | \
         --distance-error | --strips | --strip-width | --bin | --from | --to | --beam | --rms | \
         --source-free-height | --calibration-error | --disc-radius)
         return
@@ -73,7 +75,7 @@ _aureole() {
         return
     fi
     case $verb in
-    '') COMPREPLY=($(compgen -W 'predict scenario laws inspect heights' -- "$word")) ;;
+    '') COMPREPLY=($(compgen -W 'predict spectra scenario laws inspect heights' -- "$word")) ;;
     scenario | laws)
         # The names the installed program has: the first word of each line.
         local names
@@ -83,7 +85,7 @@ _aureole() {
     *)
         # Folders to go on into, and the files that fit the verb. Names with blanks stay whole.
         local IFS=$'\n' pattern='!*.@(fits|fit|fits.gz)'
-        [[ $verb == predict ]] && pattern='!*.toml'
+        [[ $verb == predict || $verb == spectra ]] && pattern='!*.toml'
         [[ $verb == inspect ]] && pattern='!*.@(toml|fits|fit|fits.gz)'
         local extglob_was
         extglob_was=$(shopt -p extglob)

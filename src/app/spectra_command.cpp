@@ -72,12 +72,18 @@ void check_target(const fs::path& target, bool force, const scenario::Scenario& 
 }
 
 void check_solution(const Solution& solution) {
-    const auto& confinement = solution.confinement;
-    if (!confinement.converged) {
+    if (!solution.confinement.converged) {
+        std::string open;
+        for (const auto& march : solution.marches) {
+            if (march.limiter_not_converged > 0) {
+                open += fmt::format("{}, {} momenta; ", march.name, march.limiter_not_converged);
+            }
+        }
+        const auto& change = solution.confinement.change;
         throw Error(ErrorKind::accuracy,
-                    fmt::format("law '{}': scattering and cosmic rays did not settle: the last of {} rounds "
-                                "changed the spectra by {:.2g}; no file is written",
-                                solution.law, confinement.change.size(), confinement.change.back()));
+                    fmt::format("law '{}': scattering and cosmic rays did not settle ({}last change {:.2g}); "
+                                "no file is written",
+                                solution.law, open, change.empty() ? 0.0 : change.back()));
     }
     constexpr double closed = 1e-6;
     for (const KindBudget& kind : solution.budgets) {

@@ -255,8 +255,7 @@ std::vector<files::Card> solver_cards(const SolvedGalaxy& galaxy) {
     cards.insert(cards.end(), more.begin(), more.end());
     const auto& change = solution.confinement.change;
     if (!change.empty()) {
-        cards.push_back({"CONFITER", static_cast<long>(change.size()), "rounds of waves and spectra"});
-        cards.push_back({"CONFLAST", change.back(), "rms of the last change of ln density"});
+        cards.push_back({"CONFLAST", change.back(), "last relative change of a density"});
     }
     return cards;
 }

@@ -46,7 +46,8 @@ std::string value_text(const Key& key, const Value& value) {
 
 /// Such a default means "or what input.grid holds".
 bool gives_way(const Key& key, const Scenario::Entry& entry) {
-    const bool of_file = std::find(key.choices.begin(), key.choices.end(), "file") != key.choices.end();
+    const bool of_file = std::find(key.choices.begin(), key.choices.end(), "file") != key.choices.end() &&
+                         !key.path.starts_with("transport."); // a wind is never taken unasked
     return !entry.given && of_file && entry.value != Value(std::string("transport"));
 }
 

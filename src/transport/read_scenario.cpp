@@ -206,7 +206,7 @@ WindSpec read_wind(const Scenario& scenario, const grid::GridFile* file, Scenari
     return wind;
 }
 
-void check_sources(const TransportSpec& spec, const Scenario& scenario, ScenarioProblems& problems) {
+void check_sources(const TransportSpec& spec, ScenarioProblems& problems) {
     if (!spec.electrons && !spec.protons) {
         problems.add("transport.species", "found no species to solve for, expected electrons or protons");
     }
@@ -274,7 +274,7 @@ TransportSpec read_transport(const Scenario& scenario) {
     spec.secondaries = scenario.boolean("transport.secondaries") && spec.electrons && spec.protons;
     spec.proton_sources = read_sources(scenario, "protons", grid, problems);
     spec.electron_sources = read_sources(scenario, "electrons", grid, problems);
-    check_sources(spec, scenario, problems);
+    check_sources(spec, problems);
     if (!problems.any()) {
         set_shares(scenario, grid, spec, problems);
     }

@@ -16,7 +16,7 @@ sys.dont_write_bytecode = True
 PROGRAM = os.path.abspath(sys.argv.pop(1))
 SOURCE = pathlib.Path(sys.argv.pop(1)).resolve()
 COMPLETION = SOURCE / "scripts/completion/aureole.bash"
-VERBS = ("predict", "scenario", "laws", "inspect", "heights")
+VERBS = ("predict", "spectra", "scenario", "laws", "inspect", "heights")
 LONG = re.compile(r"(?<![\w-])--[a-z][a-z-]*")
 skipped = []
 
@@ -82,7 +82,7 @@ class Help(unittest.TestCase):
 
     def test_wrong_use_ends_with_2_and_says_what_was_wrong(self):
         for arguments in (("--nonsense",), ("nonsense",), (), ("predict",), ("predict", "--nonsense", "a.toml"),
-                          ("heights",), ("inspect",), ("scenario", "--nonsense"), ("scenario", "nonsense"), ("laws", "--nonsense"),
+                          ("heights",), ("inspect",), ("spectra",), ("spectra", "a.toml"), ("scenario", "--nonsense"), ("scenario", "nonsense"), ("laws", "--nonsense"),
                           ("laws", "nonsense")):
             done = run(*arguments)
             self.assertEqual((done.returncode, done.stdout), (2, ""), arguments)
@@ -178,6 +178,8 @@ class Completion(unittest.TestCase):
                 pathlib.Path(folder, name).touch()
             os.mkdir(os.path.join(folder, "sub"))
             self.assertEqual(completions(PROGRAM, "predict", "", folder=folder), {"a.toml", "two words.toml", "sub"})
+            self.assertEqual(completions(PROGRAM, "spectra", "", folder=folder), {"a.toml", "two words.toml", "sub"})
+            self.assertEqual(completions(PROGRAM, "spectra", "a.toml", "-o", "m", folder=folder), {"map.fits"})
             self.assertEqual(completions(PROGRAM, "heights", "m", folder=folder), {"map.fits"})
             self.assertEqual(completions(PROGRAM, "inspect", "", folder=folder),
                              {"a.toml", "two words.toml", "map.fits", "sub"})
@@ -205,7 +207,7 @@ class Documents(unittest.TestCase):
         seen = 0
         for name in ("README.md", "docs/heights.md", "docs/results.md", "docs/grid_file.md", "docs/scenario.md", "docs/laws.md", "DEVELOPERS.md"):
             text = (SOURCE / name).read_text().replace("\\\n", " ")
-            for verb, rest in re.findall(r"aureole (predict|scenario|laws|inspect|heights)\b([^`#\n]*)", text):
+            for verb, rest in re.findall(r"aureole (predict|spectra|scenario|laws|inspect|heights)\b([^`#\n]*)", text):
                 seen += 1
                 for option in LONG.findall(rest):
                     self.assertIn(option, options_of_help(verb), f"{name}: aureole {verb}{rest}")
