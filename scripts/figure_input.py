@@ -33,6 +33,14 @@ def read_summary(folder):
     return summary
 
 
+def listed_laws(folder, summary):
+    """(name, folder) of each law of a run of several; empty for other runs."""
+    laws = summary.get("laws") or []
+    if not isinstance(laws, list) or not all(isinstance(law, dict) and law.get("law") and law.get("folder") for law in laws):
+        raise Unusable(f"{folder / 'summary.json'}: \"laws\": expected a list of objects with \"law\" and \"folder\"")
+    return [(str(law["law"]), folder / str(law["folder"])) for law in laws]
+
+
 def read_table(folder, name, needed):
     """The table, or Missing if there is none or it has no rows."""
     path = folder / "tables" / f"{name}.ecsv"

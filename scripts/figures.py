@@ -1,10 +1,12 @@
 #!/usr/bin/python3
-"""Draws the results of `aureole predict` or `aureole heights`: figures.py DIR [-o FIGDIR] [--format png|pdf] [--contours].
+"""Draws the results of `aureole predict` or `aureole heights`: figures.py DIR [-o FIGDIR] [--format png|pdf] [--contours]
+[--laws].
 
 Reads the folder DIR (summary.json, maps/, tables/) and writes into FIGDIR (default DIR/figures): radio_maps, gamma_maps and one more
-per process with its own cube, profiles, heights, spectrum, spectral_index_*. Prints the path of each file written; a figure whose data
-are not there is skipped with one line. The same folder gives the same bytes. Exit codes: 0 done, 2 wrong use or no usable folder,
-6 figures cannot be written. Needs python3-numpy, python3-matplotlib, python3-astropy.
+per process with its own cube, profiles, heights, spectrum, spectral_index_*. Of a run that solved for scattering laws it draws
+law_pressure, law_spectra, law_budgets, law_numbers and, of several laws, law_heights; the figures before then go into a folder per law.
+Prints the path of each file written; a figure whose data are not there is skipped with one line. The same folder gives the same bytes.
+Exit codes: 0 done, 2 wrong use or no usable folder, 6 figures cannot be written. Needs python3-numpy, python3-matplotlib, python3-astropy.
 """
 import argparse
 import os
@@ -21,17 +23,10 @@ from astropy import units as u
 from matplotlib import colors, patches, patheffects, transforms
 
 sys.dont_write_bytecode = True  # leave nothing beside the installed scripts
-from figure_input import (Missing, Unusable, energy_text, flags, frequency_text, listed_maps, numbers, process_text, read_map, read_summary,
-                          read_table, scaled_unit, some_of, texts)
-
-# Wong 2011, Nat. Methods 8, 441, without the yellow, which is lost on white paper. Dashes and markers tell the lines apart in grey.
-PALETTE = ("#000000", "#D55E00", "#0072B2", "#009E73", "#CC79A7", "#E69F00", "#56B4E9")
-DASHES = ("-", "--", "-.", ":", (0, (5, 1, 1, 1, 1, 1)), (0, (7, 2)), (0, (2, 1)))
-MARKERS = "osD^vPX*"
-STYLE = {"font.family": "DejaVu Sans", "font.size": 9, "axes.titlesize": 9.5, "axes.labelsize": 9, "xtick.labelsize": 8,
-         "ytick.labelsize": 8, "legend.fontsize": 8, "figure.titlesize": 11, "pdf.fonttype": 42, "image.cmap": "cividis",
-         "xtick.direction": "in", "ytick.direction": "in", "legend.frameon": False, "savefig.dpi": 160}
-
+import law_figures
+from figure_input import (Missing, Unusable, energy_text, flags, frequency_text, listed_laws, listed_maps, numbers, process_text, read_map,
+                          read_summary, read_table, scaled_unit, some_of, texts)
+from figure_style import DASHES, MARKERS, PALETTE, STYLE, plain_ticks, title
 
 # ---- maps ------------------------------------------------------------------------------------------------------------------------------
 
@@ -135,12 +130,6 @@ def panel_grid(count, aspect, panel=2.9):
     for surplus in axes.flat[count:]:
         surplus.remove()
     return figure, axes, columns, rows
-
-
-def title(figure, summary, what):
-    """Says of every figure that nothing in it was observed."""
-    name = summary.get("object") or summary.get("title") or "unnamed galaxy"
-    figure.suptitle(f"{name} - model output - {what}")
 
 
 def draw_maps(summary, panels, what, contours, beam):
@@ -395,17 +384,6 @@ def draw_exponent(ax, rows, x, colour, dash):
             ax.fill_between(at, line - spread, line + spread, color=colour, alpha=0.13, linewidth=0)
 
 
-def plain_ticks(ax):
-    """Ticks 1, 2, 5 in plain figures, so that even an axis of less than a decade has some."""
-    for axis in (ax.xaxis, ax.yaxis):
-        low, high = axis.get_view_interval()
-        span = high / low
-        steps = (1, 2, 5) if span > 8 else (1, 1.5, 2, 3, 4, 5, 7) if span > 2.5 else (1, 1.2, 1.4, 1.6, 1.8, *np.arange(2, 10, 0.5))
-        axis.set_major_locator(matplotlib.ticker.LogLocator(subs=steps, numticks=20))
-        axis.set_major_formatter(matplotlib.ticker.FuncFormatter(lambda value, _: f"{value:g}"))
-        axis.set_minor_formatter(matplotlib.ticker.NullFormatter())
-
-
 # ---- spectrum --------------------------------------------------------------------------------------------------------------------------
 
 def power_per_decade(table):
@@ -485,6 +463,8 @@ def spectrum(folder, summary, _):
 
 FIGURES = (("radio maps", radio_maps), ("gamma-ray maps", gamma_maps), ("profiles", profiles), ("heights", heights), ("spectrum", spectrum),
            ("spectral index", spectral_index))
+LAW_FIGURES = (("pressure", law_figures.pressure), ("local spectra", law_figures.spectra), ("heights of the laws", law_figures.heights),
+               ("energy budgets", law_figures.budgets), ("laws in numbers", law_figures.in_numbers))
 
 
 def save(figure, path):
@@ -500,6 +480,34 @@ def save(figure, path):
     print(path, flush=True)
 
 
+def tasks(folder, target, only_laws):
+    """(figures, folder, summary, folder of the figures) of a run; of one with several laws also those of each law."""
+    summary = read_summary(folder)
+    laws = listed_laws(folder, summary)
+    if (folder / "tables/laws.ecsv").is_file():
+        yield LAW_FIGURES, folder, summary, target
+    if only_laws:
+        return
+    if not laws:
+        yield FIGURES, folder, summary, target
+    for law, part in laws:
+        yield FIGURES, part, read_summary(part) | {"law": law}, target / part.name
+
+
+def draw_all(figures, folder, summary, target, options):
+    """Draws what has data; how many files that made."""
+    drawn = 0
+    for what, draw in figures:
+        try:
+            for name, figure in draw(folder, summary, options):
+                save(figure, target / f"{name}.{options.format}")
+                drawn += 1
+        except Missing as reason:
+            of_law = f" of {summary['law']}" if summary.get("law") else ""
+            print(f"skipped {what}{of_law}: {reason}", flush=True)
+    return drawn
+
+
 def main():
     parser = argparse.ArgumentParser(description=textwrap.fill(__doc__.split("\n\n")[1], 79),
                                      formatter_class=argparse.RawDescriptionHelpFormatter)
@@ -507,20 +515,15 @@ def main():
     parser.add_argument("-o", "--output", metavar="FIGDIR", type=pathlib.Path, help="folder of the figures (default DIR/figures)")
     parser.add_argument("--format", choices=("png", "pdf"), default="png", help="file format (default png)")
     parser.add_argument("--contours", action="store_true", help="contours on the maps")
+    parser.add_argument("--laws", action="store_true", help="only the figures that compare scattering laws")
     options = parser.parse_args()
     plt.rcParams.update(STYLE)
     target = options.output or options.folder / "figures"
     drawn = 0
     try:
-        summary = read_summary(options.folder)
-        target.mkdir(parents=True, exist_ok=True)
-        for what, draw in FIGURES:
-            try:
-                for name, figure in draw(options.folder, summary, options):
-                    save(figure, target / f"{name}.{options.format}")
-                    drawn += 1
-            except Missing as reason:
-                print(f"skipped {what}: {reason}", flush=True)
+        for figures, folder, summary, into in list(tasks(options.folder, target, options.laws)):
+            into.mkdir(parents=True, exist_ok=True)
+            drawn += draw_all(figures, folder, summary, into, options)
     except Unusable as error:
         print(f"figures.py: {error}", file=sys.stderr)
         return 2

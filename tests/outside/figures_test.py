@@ -13,10 +13,12 @@ from astropy.io import fits
 from matplotlib import image
 
 sys.dont_write_bytecode = True
+import fake_laws
 import fake_results
 
 ALL = ("radio_maps", "gamma_maps", "gamma_maps_pion_decay", "gamma_maps_inverse_compton_cmb", "profiles", "heights", "spectrum",
        "spectral_index_144MHz_1.4GHz")
+LAW_FIGURES = ("law_pressure", "law_spectra", "law_budgets", "law_numbers")
 failures = []
 
 
@@ -148,6 +150,96 @@ def broken_folders_are_refused(folder):
     check(result.returncode == 6 and "cannot write" in result.stderr, f"unwritable: {result.returncode}, {result.stderr!r}")
 
 
+def names(folder, form="png"):
+    return sorted(p.stem for p in pathlib.Path(folder).glob(f"*.{form}"))
+
+
+def law_figure(what, folder):
+    """The one figure of a function of law_figures.py, not yet saved."""
+    summary = script.read_summary(folder)
+    return next(iter(getattr(script.law_figures, what)(folder, summary, None)))[1]
+
+
+def laws_have_figures_that_compare_them_and_figures_of_their_own(folder):
+    result = draw(folder, "-o", scratch / "laws1")
+    check(result.returncode == 0 and result.stderr == "", f"several laws: exit {result.returncode}, {result.stderr!r}")
+    check(names(scratch / "laws1") == sorted((*LAW_FIGURES, "law_heights")), f"figures of the laws: {names(scratch / 'laws1')}")
+    for law in fake_laws.LAWS:
+        check(names(scratch / "laws1" / law) == ["heights", "spectrum"], f"figures of {law}: {names(scratch / 'laws1' / law)}")
+        check(f"skipped profiles of {law}" in result.stdout, f"no line about the profiles of {law}")
+    again = draw(folder, "-o", scratch / "laws2", "--laws")
+    check(again.returncode == 0 and not (scratch / "laws2" / "even").exists(), "--laws draws more than the laws")
+    for name in names(scratch / "laws1"):
+        one, two = (scratch / f"laws{i}" / f"{name}.png" for i in (1, 2))
+        check(one.read_bytes() == two.read_bytes(), f"{name}.png differs between two runs")
+        check(spread(one) > 20, f"{name}.png is empty")
+
+
+def one_law_alone_has_all_figures_in_one_folder():
+    fake_laws.write(scratch / "alone", laws=("even",))
+    result = draw(scratch / "alone", "--format", "pdf")
+    check(result.returncode == 0, f"one law: exit {result.returncode}, {result.stderr!r}")
+    drawn = names(scratch / "alone" / "figures", "pdf")
+    check(drawn == sorted((*LAW_FIGURES, "heights", "profiles", "spectrum")), f"one law: {drawn}")
+    fake_results.write(scratch / "lawless", without=fake_laws.MAPS)
+    refused_laws = draw(scratch / "lawless", "--laws")
+    check(refused_laws.returncode == 2 and "nothing to draw" in refused_laws.stderr, "--laws of a run without laws is not refused")
+
+
+def budgets_are_stacked_to_their_shares(folder):
+    """Widths of the bars of electrons, by group, and gains to the left of 0."""
+    figure = law_figure("budgets", folder)
+    for ax, shares in zip(figure.axes, fake_laws.SHARES.values()):
+        bars = [p for p in ax.patches if abs(p.get_y() + p.get_height() / 2) < 1e-9 and p.get_width() != 0]  # of the first law
+        widths = [p.get_width() for p in bars]
+        check(abs(sum(widths) - 100) < 1e-9, f"the shares drawn add up to {sum(widths)}, expected 100")
+        left = min(p.get_x() + min(p.get_width(), 0) for p in bars)
+        right = max(p.get_x() + max(p.get_width(), 0) for p in bars)
+        gain = -sum(min(s, 0) for s in shares.values())
+        check(abs(left + gain) < 1e-9 and abs(right - 100 - gain) < 1e-9, f"bars from {left} to {right}, a gain of {gain}")
+    drawn = [round(p.get_width(), 6) for p in figure.axes[1].patches if abs(p.get_y() + p.get_height() / 2) < 1e-9]
+    check(drawn == [20, 21, 7, 7, 0, 0, 40, 3, 2], f"electrons: groups of {drawn}")
+    reach = figure.axes[1].get_xlim()
+    check(reach[0] < -10 and reach[1] > 110, f"the axis {reach} cuts the bars")
+
+
+def a_law_looks_the_same_in_all_figures_and_like_no_other(folder):
+    looks = {law: set() for law in fake_laws.LAWS}
+    for what in ("pressure", "spectra"):
+        for ax in law_figure(what, folder).axes:
+            for law, line in zip(fake_laws.LAWS, [one for one in ax.lines if one.get_marker() not in ("", "None", None)]):
+                looks[law].add((line.get_color(), line.get_linestyle(), line.get_marker()))
+    check(all(len(one) == 1 for one in looks.values()), f"a law has several looks: {looks}")
+    for part in range(3):
+        check(len({next(iter(one))[part] for one in looks.values()}) == 3, f"laws are alike in colour, dash or marker: {looks}")
+
+
+def the_guide_falls_as_one_over_distance(folder):
+    for ax in law_figure("pressure", folder).axes:
+        x, y = next(line for line in ax.lines if line.get_color() == "0.45").get_data()
+        slope = np.log(y[-1] / y[0]) / np.log(x[-1] / x[0])
+        check(abs(slope + 1) < 1e-12, f"the guide 1/distance has the slope {slope}")
+
+
+def heights_of_different_models_are_told_apart(folder):
+    legend = law_figure("heights", folder).axes[0].get_legend()
+    labels = [text.get_text() for text in legend.get_texts()]
+    check(labels == ["even: exponential", "steep: two exponential, component 1", "steep: two exponential, component 2",
+                     f"{fake_laws.LAWS[2]}: exponential"], f"legend of the heights: {labels}")
+    notes = legend.get_title().get_text()
+    check("do not compare" in notes and "numerical error: 1.5 %" in notes and "distance, not drawn: 8 %" in notes, f"notes: {notes!r}")
+
+
+def broken_law_folders_are_refused(folder):
+    for name, part, change, word in (("entry", "summary.json", lambda b: b.replace(b'"folder"', b'"place"'), "laws"),
+                                     ("gone", "summary.json", lambda b: b.replace(b'"folder": "steep"', b'"folder": "gone"'), "gone"),
+                                     ("short", "tables/budgets.ecsv", lambda b: b.replace(b"share", b"shore"), "budgets.ecsv")):
+        broken = scratch / f"laws_{name}"
+        fake_laws.write(broken)
+        (broken / part).write_bytes(change((broken / part).read_bytes()))
+        refused(broken, word, f"laws with a broken {part} ({name})")
+
+
 if __name__ == "__main__":
     figures = pathlib.Path(sys.argv[1]).resolve()
     sys.path.insert(0, str(figures.parent))
@@ -162,5 +254,15 @@ if __name__ == "__main__":
         east_is_to_the_left(full)
         absent_parts_are_skipped_with_one_line_each()
         broken_folders_are_refused(full)
+        laws = scratch / "laws"
+        script.STYLE["savefig.dpi"] = 70  # takes half the time
+        fake_laws.write(laws)
+        laws_have_figures_that_compare_them_and_figures_of_their_own(laws)
+        one_law_alone_has_all_figures_in_one_folder()
+        budgets_are_stacked_to_their_shares(laws)
+        a_law_looks_the_same_in_all_figures_and_like_no_other(laws)
+        the_guide_falls_as_one_over_distance(laws)
+        heights_of_different_models_are_told_apart(laws)
+        broken_law_folders_are_refused(laws)
     print("failures:", len(failures))
     sys.exit(1 if failures else 0)
