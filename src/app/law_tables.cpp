@@ -427,6 +427,57 @@ void write_law_tables(const std::vector<LawResult>& laws,
     }
 }
 
+namespace {
+
+/// Scale heights of one band, a row a law and a column a map.
+std::vector<std::string> height_lines(const std::vector<LawResult>& laws,
+                                      std::size_t widest,
+                                      const char* title,
+                                      std::optional<BandHeights> PredictedHeights::*band) {
+    const auto& first = laws.front().sky.heights.*band;
+    if (!first || !first->problem.empty()) {
+        return {};
+    }
+    std::vector<std::string> lines{"", fmt::format("{} (kpc)", title)};
+    std::string head = fmt::format("{:<{}}", "law", widest);
+    for (const std::string& label : first->labels) {
+        head += fmt::format(" {:>11}", label);
+    }
+    lines.push_back(head + "  model");
+    std::vector<std::string> models;
+    for (const LawResult& law : laws) {
+        const auto& heights = law.sky.heights.*band;
+        if (!heights || !heights->problem.empty()) {
+            continue;
+        }
+        std::string line = fmt::format("{:<{}}", law.name, widest);
+        std::string model;
+        for (const auto& row : heights->report.rows) {
+            if (!row.chosen || row.strip >= 0) {
+                continue;
+            }
+            std::string text;
+            for (const auto& component : row.fit.component) {
+                text +=
+                    fmt::format("{}{:.3g}", text.empty() ? "" : " + ", component.h / constants::kiloparsec);
+            }
+            line += fmt::format(" {:>11}", text);
+            model = profiles::to_string(row.fit.model);
+        }
+        lines.push_back(line + "  " + model);
+        models.push_back(model);
+    }
+    if (std::any_of(models.begin(), models.end(),
+                    [&](const auto& model) { return model != models.front(); })) {
+        lines.emplace_back(
+            "The profiles of the laws are fitted best by different models, whose heights do not "
+            "compare; choose one with heights.models.");
+    }
+    return lines;
+}
+
+} // namespace
+
 std::vector<std::string> law_lines(const std::vector<LawResult>& laws) {
     std::size_t widest = 3;
     for (const LawResult& law : laws) {
@@ -452,6 +503,13 @@ std::vector<std::string> law_lines(const std::vector<LawResult>& laws) {
     lines.emplace_back("");
     const auto shares = share_lines(laws, widest);
     lines.insert(lines.end(), shares.begin(), shares.end());
+    if (laws.size() > 1) {
+        for (const auto& more :
+             {height_lines(laws, widest, "Radio scale heights, synchrotron", &PredictedHeights::radio),
+              height_lines(laws, widest, "Gamma-ray scale heights", &PredictedHeights::gamma)}) {
+            lines.insert(lines.end(), more.begin(), more.end());
+        }
+    }
     return lines;
 }
 

@@ -215,21 +215,26 @@ predict(const scenario::Scenario& scenario, const PredictOptions& options, const
     folder.finish(options.command, context);
     note_timing(context, "writing", since);
     result.files = folder.files();
-    for (const LawResult& law : laws) {
-        if (!alone) {
-            result.summary.push_back("== " + law.name);
-        }
-        const auto lines =
-            summary_lines(scenario, inputs.settings, law.sky.fine.products, law.sky.fine.report,
-                          law.sky.heights, (options.folder / folder_of(law, alone)).string());
-        result.summary.insert(result.summary.end(), lines.begin(), lines.end());
-        result.summary.emplace_back("");
+    if (alone) {
+        const Sky& sky = laws.front().sky;
+        result.summary = summary_lines(scenario, inputs.settings, sky.fine.products, sky.fine.report,
+                                       sky.heights, options.folder.string());
     }
     if (scenario.has_transport()) {
+        if (alone) {
+            result.summary.emplace_back("");
+        } else {
+            result.summary = title_lines(scenario, inputs.settings);
+        }
         const auto lines = law_lines(laws);
         result.summary.insert(result.summary.end(), lines.begin(), lines.end());
-    } else {
-        result.summary.pop_back();
+        if (!alone) {
+            result.summary.emplace_back("");
+            result.summary.push_back(
+                fmt::format("Maps and tables of each law are in {}, those of all laws in {}.",
+                            (options.folder / "<law>").string(), (options.folder / "tables").string()));
+            result.summary.emplace_back(leaves_out_line);
+        }
     }
     return result;
 }

@@ -228,19 +228,21 @@ void write_tables(files::RunFolder& folder,
                       summary_json(scenario, settings, products, heights, warnings, hash, command).text());
 }
 
+std::vector<std::string> title_lines(const scenario::Scenario& scenario, const MapSettings& settings) {
+    const std::string title = scenario.text("run.title");
+    return {title.empty() ? scenario.text("run.object") : title,
+            fmt::format("inclination {:.4g} deg, distance {}", settings.view.inclination / constants::degree,
+                        format_quantity(settings.view.distance, dimension::length)),
+            ""};
+}
+
 std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
                                        const MapSettings& settings,
                                        const std::vector<MapProduct>& products,
                                        const emission::EmissionReport& report,
                                        const PredictedHeights& heights,
                                        const std::string& folder) {
-    std::vector<std::string> lines;
-    const std::string title = scenario.text("run.title");
-    lines.push_back(title.empty() ? scenario.text("run.object") : title);
-    lines.push_back(fmt::format("inclination {:.4g} deg, distance {}",
-                                settings.view.inclination / constants::degree,
-                                format_quantity(settings.view.distance, dimension::length)));
-    lines.emplace_back("");
+    std::vector<std::string> lines = title_lines(scenario, settings);
     lines.push_back(fmt::format("{:<16} {:>24} {:>24} {:>10}", "channel", "flux", "peak", "num. error"));
     for (const MapProduct& product : products) {
         if (product.plane.process != "total") {
@@ -275,8 +277,7 @@ std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
     lines.emplace_back("");
     lines.push_back(
         fmt::format("Maps, tables and the scenario are in {} (summary.json, manifest.json).", folder));
-    lines.emplace_back("Model output. It leaves out thermal emission, Faraday effects, noise and more: see "
-                       "'leaves_out' in summary.json.");
+    lines.emplace_back(leaves_out_line);
     return lines;
 }
 

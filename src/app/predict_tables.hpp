@@ -29,6 +29,14 @@ std::vector<files::EcsvColumn> heights_columns(const PredictedHeights& heights);
 std::vector<files::EcsvColumn> stacked(std::vector<files::EcsvColumn> first,
                                        const std::vector<files::EcsvColumn>& second);
 
+/// What ends every summary.
+inline constexpr const char* leaves_out_line =
+    "Model output. It leaves out thermal emission, Faraday effects, noise and more: see 'leaves_out' in "
+    "summary.json.";
+
+/// Title and view of a run, and an empty line.
+std::vector<std::string> title_lines(const scenario::Scenario& scenario, const MapSettings& settings);
+
 /// What a person wants to see at the end of a run.
 std::vector<std::string> summary_lines(const scenario::Scenario& scenario,
                                        const MapSettings& settings,
