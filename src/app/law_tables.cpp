@@ -198,7 +198,7 @@ struct CellState {
 
 CellState state_of(const Solution& solution, const media::Media& media, bool own_grid, std::size_t cell) {
     CellState state;
-    state.pressure = solution.pressure[cell];
+    state.pressure = solution.pressure.empty() ? nothing : solution.pressure[cell];
     if (solution.protons && !solution.protons->scattering_rate.empty()) {
         const Spectra& protons = *solution.protons;
         const std::size_t node = node_of_1gv(protons);

@@ -378,10 +378,6 @@ TEST_CASE("what cannot be solved is refused with its place", "[transport][scenar
          "which is of protons"},
         {"protons.source = \"none\"\n[transport.electrons.source.a]\nelectron_share = 0.01\n" + law,
          "without a source of protons"},
-        {"protons.source = \"none\"\ntransport.secondaries = true\n"
-         "[transport.electrons.source.a]\npower = \"1e39 erg s-1\"\n" +
-             law,
-         "transport.secondaries: found true without both species"},
         {"[transport.protons.source.a]\nslope = 2.2\n" + law,
          "halo.toml:2:1: transport.protons.source.a: found no power, expected one of power, supernova_rate "
          "and star_formation_rate"},
