@@ -149,7 +149,7 @@ namespace {
 
 constexpr double lowest_radiating = 2 * constants::megaelectronvolt;
 constexpr double highest_radiating = 1e4 * constants::gigaelectronvolt;
-constexpr double radiation_step = 0.1; // of the table, in ln T
+constexpr double radiation_step = 0.25; // of the table, in ln T
 
 /// int k (d sigma/dk) dk/E [cm2]: logarithmic at k = 0, bends at 0.02 and 0.5 m c^2, a square root at the
 /// tip.
@@ -188,7 +188,7 @@ double emitting(double kinetic_energy, double hydrogen) {
 /// Below the table the slope of ln value fades as e^y, y = ln(T/lowest).
 double below_table(const LogTable& table, double ln_t) {
     const double first = std::log(lowest_radiating);
-    constexpr double h = 0.5 * radiation_step;
+    constexpr double h = 0.05;
     const double start = table.log_value(first);
     const double slope =
         (-3 * start + 4 * table.log_value(first + h) - table.log_value(first + 2 * h)) / (2 * h);
@@ -312,16 +312,19 @@ double proton_coulomb_logarithm(double kinetic_energy, double electron_density) 
     return std::max(1.0, 0.5 * std::log(ratio));
 }
 
+double electron_thermal_cube(double temperature) {
+    const double thermal = std::sqrt(2 * constants::boltzmann * temperature / rest);
+    return 0.75 * std::sqrt(pi) * thermal * thermal * thermal;
+}
+
 double proton_coulomb_loss(double kinetic_energy, double electron_density, double electron_temperature) {
     if (!(electron_density > 0)) {
         return 0;
     }
     const double beta = speed_over_c(kinetic_energy, proton_rest);
-    const double thermal = std::sqrt(2 * constants::boltzmann * electron_temperature / rest);
-    const double cube = 0.75 * std::sqrt(pi) * thermal * thermal * thermal;
     return 2 * collision_constant * electron_density *
            proton_coulomb_logarithm(kinetic_energy, electron_density) * beta * beta /
-           (cube + beta * beta * beta);
+           (electron_thermal_cube(electron_temperature) + beta * beta * beta);
 }
 
 double target_nuclei_factor(double helium) {

@@ -148,7 +148,151 @@ template <class Function> double energy_moment(double low, double high, Function
         std::log(low), std::log(high), panels);
 }
 
+constexpr int stencil = 6;
+
+/// Weights of six values at 0, 1, ... 5 in the polynomial through them, at t.
+std::array<double, stencil> lagrange(double t) {
+    constexpr std::array<double, stencil> scale{-1.0 / 120, 1.0 / 24,  -1.0 / 12,
+                                                1.0 / 12,   -1.0 / 24, 1.0 / 120};
+    std::array<double, stencil> weight = scale;
+    double below = 1;
+    double above = 1;
+    for (std::size_t i = 0; i < stencil; ++i) {
+        const std::size_t j = stencil - 1 - i;
+        weight[i] *= below;
+        weight[j] *= above;
+        below *= t - static_cast<double>(i);
+        above *= t - static_cast<double>(j);
+    }
+    return weight;
+}
+
+/// rho(x) = sum_k c_k x^k above and below x = r.
+struct RestSpectrum {
+    std::array<double, 4> above, below;
+};
+
+RestSpectrum rest_polynomials(Secondary secondary) {
+    const double rr = r * r;
+    if (secondary == Secondary::electron_neutrinos) {
+        const double scale = 2 / (3 * square(1 - r));
+        return {{-6 * r * scale, 18 * scale, (18 * r - 36) * scale, (18 - 12 * r) * scale},
+                {0, 0, 12 / r, -4 * (1 + 2 * r) / rr}};
+    }
+    const double scale = 6 * (3 - 2 * r) / (9 * square(1 - r));
+    return {{scale, 0, -3 * scale, 2 * scale}, {0, 0, 2 * (1 + 2 * r) / rr, -4 * (1 + 2 * r) / (3 * rr)}};
+}
+
+/// isospin_cross_section() of the leptons of muons.
+double isospin_of_moments(const PionPhotons& photons, Secondary secondary, double energy) {
+    const RestSpectrum rho = rest_polynomials(secondary);
+    const auto all = photons.moments_above(energy);
+    const auto soft = photons.moments_above(energy / r);
+    double sum = 0;
+    double power = 1;
+    for (std::size_t k = 0; k < all.size(); ++k) {
+        sum += power * (rho.above[k] * (all[k] - soft[k]) + rho.below[k] * soft[k]);
+        power *= energy;
+    }
+    return std::max(0.0, sum); // at the highest energies the terms cancel
+}
+
 } // namespace
+
+PionPhotons::PionPhotons(PionModel model, double kinetic_energy) {
+    const PhotonRange range = pion_photon_range(kinetic_energy);
+    if (!(range.min < range.max)) {
+        return;
+    }
+    peak_ = 0.5 * std::log(range.min * range.max);
+    end_ = 0.5 * std::log(range.max / range.min);
+    const int half = std::max(20, static_cast<int>(std::ceil(end_ / 0.15)));
+    step_ = end_ / half;
+    for (int i = 0; i < half; ++i) {
+        photons_.push_back(pion_gamma_cross_section(model, std::exp(peak_ + i * step_), kinetic_energy));
+    }
+    photons_.push_back(0);
+    above_.assign(static_cast<std::size_t>(2 * half + 1), {});
+    for (int i = 2 * half; i-- > 0;) {
+        const auto node = static_cast<std::size_t>(i);
+        above_[node] = moments(peak_ + (i - half) * step_, peak_ + (i + 1 - half) * step_);
+        for (std::size_t k = 0; k < 4; ++k) {
+            above_[node][k] += above_[node + 1][k];
+        }
+    }
+}
+
+double PionPhotons::photons(double log_energy) const {
+    const double at = std::abs(log_energy - peak_) / step_;
+    const int last = static_cast<int>(photons_.size()) - stencil;
+    const int start = std::clamp(static_cast<int>(at) - stencil / 2 + 1, 0, last);
+    const auto weight = lagrange(at - start);
+    double sum = 0;
+    for (std::size_t i = 0; i < stencil; ++i) {
+        sum += weight[i] * photons_[static_cast<std::size_t>(start) + i];
+    }
+    return sum;
+}
+
+std::array<double, 4> PionPhotons::moments(double from, double to) const {
+    static const QuadratureRule rule = gauss_legendre(4);
+    std::array<double, 4> sum{};
+    const double half = 0.5 * (to - from);
+    for (std::size_t i = 0; i < rule.node.size(); ++i) {
+        const double log_energy = from + half * (1 + rule.node[i]);
+        const double inverse = std::exp(-log_energy);
+        double value = half * rule.weight[i] * photons(log_energy);
+        for (double& part : sum) {
+            part += value;
+            value *= inverse;
+        }
+    }
+    return sum;
+}
+
+std::array<double, 4> PionPhotons::moments_above(double energy) const {
+    const double log_energy = std::log(energy);
+    if (above_.empty() || log_energy >= peak_ + end_) {
+        return {};
+    }
+    if (log_energy <= peak_ - end_) {
+        return above_.front();
+    }
+    const auto node =
+        std::min(static_cast<std::size_t>((log_energy - peak_ + end_) / step_) + 1, above_.size() - 1);
+    auto sum = moments(log_energy, peak_ - end_ + static_cast<double>(node) * step_);
+    for (std::size_t k = 0; k < 4; ++k) {
+        sum[k] += above_[node][k];
+    }
+    return sum;
+}
+
+SecondarySpectrum::SecondarySpectrum(SecondaryModel model,
+                                     PionModel pions,
+                                     Secondary secondary,
+                                     double kinetic_energy)
+    : model_(model), pions_(pions), secondary_(secondary), kinetic_energy_(kinetic_energy) {
+    const bool isospin = model == SecondaryModel::isospin || model == SecondaryModel::isospin_kelner_2006;
+    if (!isospin || pions == PionModel::kelner_2006 || secondary == Secondary::muon_neutrinos_of_pions ||
+        !(kinetic_energy > pion_threshold())) {
+        return;
+    }
+    direct_share_ = model == SecondaryModel::isospin ? 0 : kelner_share(kinetic_energy);
+    if (direct_share_ < 1) {
+        table_.emplace(pions, kinetic_energy);
+    }
+}
+
+double SecondarySpectrum::operator()(double energy) const {
+    if (!table_) {
+        return secondary_cross_section(model_, pions_, secondary_, energy, kinetic_energy_);
+    }
+    double sum = (1 - direct_share_) * isospin_of_moments(*table_, secondary_, energy);
+    if (direct_share_ > 0) {
+        sum += direct_share_ * direct_cross_section(secondary_, energy, kinetic_energy_);
+    }
+    return sum;
+}
 
 double kelner_2006_lepton_spectrum(Secondary secondary, double x, double total_energy) {
     if (!(x > 0 && x < 1)) {

@@ -116,6 +116,31 @@ CellFunction electron_coulomb(const std::vector<double>& density) {
     };
 }
 
+/// proton_coulomb_loss(), whose logarithm falls with density as -(ln n)/2.
+CellFunction proton_coulomb(const std::vector<double>& density, const std::vector<double>& temperature) {
+    struct Cell {
+        double density, half_logarithm, cube;
+    };
+    std::vector<Cell> cells;
+    for (std::size_t cell = 0; cell < density.size(); ++cell) {
+        const double n = density[cell];
+        const double kelvin = temperature.empty() ? 1e4 : temperature[cell];
+        cells.push_back({n, n > 0 ? 0.5 * std::log(n) : 0.0, physics::electron_thermal_cube(kelvin)});
+    }
+    return [cells = std::move(cells)](const Particle& particle, std::span<double> out) {
+        const double t = particle.kinetic_energy;
+        const double beta = particle.speed / constants::speed_of_light;
+        const double cube = beta * beta * beta;
+        const double logarithm = physics::proton_coulomb_logarithm(t, 1);
+        const double factor = physics::proton_coulomb_loss(t, 1, 0) / logarithm * cube; // of cold electrons
+        for (std::size_t cell = 0; cell < out.size(); ++cell) {
+            const Cell& here = cells[cell];
+            out[cell] =
+                here.density * std::max(1.0, logarithm - here.half_logarithm) * factor / (here.cube + cube);
+        }
+    };
+}
+
 } // namespace
 
 LossRates electron_losses(const AxisymmetricMedia& media, const TransportSpec& spec) {
@@ -161,16 +186,7 @@ LossRates proton_losses(const AxisymmetricMedia& media, const TransportSpec& spe
         add(losses, "ionisation", ionisation(media, physics::proton_ionisation_loss, spec.helium_fraction));
     }
     if (any(free_electrons(media))) {
-        const auto temperature = media.temperature.empty()
-                                     ? std::vector<double>(media.grid.stored_cells(), 1e4)
-                                     : media.temperature;
-        add(losses, "coulomb",
-            [density = free_electrons(media), temperature](const Particle& particle, std::span<double> out) {
-                for (std::size_t cell = 0; cell < out.size(); ++cell) {
-                    out[cell] = physics::proton_coulomb_loss(particle.kinetic_energy, density[cell],
-                                                             temperature[cell]);
-                }
-            });
+        add(losses, "coulomb", proton_coulomb(free_electrons(media), media.temperature));
     }
     auto nuclei = hydrogen(media);
     if (!any(nuclei)) {

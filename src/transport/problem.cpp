@@ -232,7 +232,7 @@ Problem prepare_problem(const TransportSpec& spec,
         problem.protons = make_species(spec, spec.proton_sources, rings, constants::proton_rest_energy,
                                        secondaries ? 10 * highest : highest);
         problem.protons.losses = proton_losses(problem.media, spec);
-        problem.gamma = gamma_weights(spec, *problem.protons.basis);
+        problem.gamma = gamma_weights(spec, *problem.protons.basis, context);
     }
     if (spec.electrons) {
         problem.electrons =

@@ -7,7 +7,6 @@
 #include "aureole/transport/particle.hpp"
 
 #include <algorithm>
-#include <array>
 #include <cmath>
 
 namespace aureole::transport {
@@ -44,26 +43,22 @@ double proton_speed(double kinetic_energy) {
     return constants::speed_of_light * physics::speed_over_c(kinetic_energy, constants::proton_rest_energy);
 }
 
-void fill_rows(const TransportSpec& spec,
-               const spectra::Basis& protons,
-               std::size_t row,
-               SecondaryMatrix& m) {
-    const Particle lepton = particle_of_momentum(m.momentum[row], constants::electron_rest_energy);
-    const double energy = lepton.total_energy;
-    const std::span all = std::span(m.electrons).subspan(row * m.protons, m.protons);
-    const std::span positive = std::span(m.positrons).subspan(row * m.protons, m.protons);
-    const double from = std::max(physics::pion_threshold(), energy);
-    for_points(protons, 3, from, [&](double t, double width, std::size_t interval, double log_t) {
-        const double cross_section = physics::secondary_cross_section(
-            spec.secondary_model, spec.pion_model, physics::Secondary::electrons, energy, t);
-        if (cross_section > 0) {
-            const double weight = spec.nuclear_enhancement * width * std::pow(t, -spectra::weighting) *
-                                  proton_speed(t) * cross_section * lepton.speed;
-            const double share = physics::positron_fraction(spec.pion_model, t);
-            add_point(protons, interval, log_t, (1 - share) * weight, all);
-            add_point(protons, interval, log_t, share * weight, positive);
-        }
-    });
+/// A point of the integral over protons and what is the same for all leptons there.
+struct ProtonPoint {
+    double kinetic_energy, log_energy, weight, positrons;
+    std::size_t interval;
+};
+
+std::vector<ProtonPoint> proton_points(const TransportSpec& spec, const spectra::Basis& protons) {
+    std::vector<ProtonPoint> points;
+    for_points(
+        protons, 3, physics::pion_threshold(),
+        [&](double t, double width, std::size_t interval, double log_t) {
+            const double weight =
+                spec.nuclear_enhancement * width * std::pow(t, -spectra::weighting) * proton_speed(t);
+            points.push_back({t, log_t, weight, physics::positron_fraction(spec.pion_model, t), interval});
+        });
+    return points;
 }
 
 } // namespace
@@ -87,56 +82,72 @@ SecondaryMatrix secondary_matrix(const TransportSpec& spec,
     matrix.momentum.assign(lepton_momentum.begin(), lepton_momentum.end());
     matrix.protons = protons.nodes();
     const std::size_t rows = matrix.momentum.size();
+    std::vector<Particle> leptons;
+    for (const double p : matrix.momentum) {
+        leptons.push_back(particle_of_momentum(p, constants::electron_rest_energy));
+    }
+    const auto points = proton_points(spec, protons);
+    std::vector<double> cross_section(points.size() * rows); // [points][leptons]
+    for_each_block(context, points.size(), [&](std::size_t n) {
+        const double t = points[n].kinetic_energy;
+        const physics::SecondarySpectrum spectrum(spec.secondary_model, spec.pion_model,
+                                                  physics::Secondary::electrons, t);
+        for (std::size_t row = 0; row < rows; ++row) {
+            const double energy = leptons[row].total_energy;
+            cross_section[n * rows + row] = energy < t ? spectrum(energy) : 0.0;
+        }
+    });
     matrix.electrons.assign(rows * matrix.protons, 0.0);
     matrix.positrons = matrix.electrons;
-    const std::size_t step = rows > 8 ? 2 : 1;
-    const std::size_t nodes = (rows + step - 1) / step;
-    for_each_block(context, nodes, [&](std::size_t n) { fill_rows(spec, protons, n * step, matrix); });
-    for (std::size_t row = 1; step == 2 && row < rows; row += 2) {
-        const double x = std::log(matrix.momentum[row]);
-        const std::size_t start =
-            std::min(row / 2 == 0 ? std::size_t{0} : row / 2 - 1, nodes - std::min<std::size_t>(nodes, 4));
-        std::array<double, 4> weight{};
-        for (std::size_t a = 0; a < 4; ++a) {
-            const auto ln = [&](std::size_t b) { return std::log(matrix.momentum[2 * (start + b)]); };
-            weight[a] = std::pow(matrix.momentum[2 * (start + a)] / matrix.momentum[row], spectra::weighting);
-            for (std::size_t b = 0; b < 4; ++b) {
-                weight[a] *= a == b ? 1.0 : (x - ln(b)) / (ln(a) - ln(b));
-            }
-        }
-        for (auto* part : {&matrix.electrons, &matrix.positrons}) {
-            for (std::size_t j = 0; j < matrix.protons; ++j) {
-                for (std::size_t a = 0; a < 4; ++a) {
-                    (*part)[row * matrix.protons + j] +=
-                        weight[a] * (*part)[2 * (start + a) * matrix.protons + j];
-                }
+    for (std::size_t n = 0; n < points.size(); ++n) {
+        const ProtonPoint& point = points[n];
+        for (std::size_t row = 0; row < rows; ++row) {
+            const double weight = point.weight * leptons[row].speed * cross_section[n * rows + row];
+            if (weight > 0) {
+                const auto part = [&](std::vector<double>& of) {
+                    return std::span(of).subspan(row * matrix.protons, matrix.protons);
+                };
+                add_point(protons, point.interval, point.log_energy, (1 - point.positrons) * weight,
+                          part(matrix.electrons));
+                add_point(protons, point.interval, point.log_energy, point.positrons * weight,
+                          part(matrix.positrons));
             }
         }
     }
     return matrix;
 }
 
-std::vector<double> gamma_weights(const TransportSpec& spec, const spectra::Basis& protons) {
-    static const QuadratureRule rule = gauss_legendre(12);
+std::vector<double>
+gamma_weights(const TransportSpec& spec, const spectra::Basis& protons, const RunContext& context) {
+    static const QuadratureRule rule = gauss_legendre(8);
     constexpr double low = 0.1 * constants::gigaelectronvolt;
     constexpr double high = 100 * constants::gigaelectronvolt;
+    const bool edged = spec.pion_model == physics::PionModel::kelner_2006;
+    const double panel = edged ? 0.2 : 2.4; // its spectrum below 100 GeV has an edge
     const auto power = [&](double t) {
         const auto range = physics::pion_photon_range(t);
         const double from = std::max(low, range.min);
-        const double to = std::min(high, spec.pion_model == physics::PionModel::kelner_2006 ? t : range.max);
+        const double to = std::min(high, edged ? t : range.max);
         if (!(from < to)) {
             return 0.0;
         }
-        const double photons = integrate_panels(
+        return integrate_panels(
             rule,
             [&](double y) {
                 const double e = std::exp(y);
                 return e * e * physics::pion_gamma_cross_section(spec.pion_model, e, t);
             },
-            std::log(from), std::log(to), static_cast<int>(std::ceil(std::log(to / from) / 1.0)));
-        return spec.nuclear_enhancement * proton_speed(t) * photons;
+            std::log(from), std::log(to), static_cast<int>(std::ceil(std::log(to / from) / panel)));
     };
-    return integral_weights(protons, power, 3, physics::pion_threshold());
+    const auto points = proton_points(spec, protons);
+    std::vector<double> photons(points.size());
+    for_each_block(context, points.size(),
+                   [&](std::size_t n) { photons[n] = points[n].weight * power(points[n].kinetic_energy); });
+    std::vector<double> weights(protons.nodes(), 0.0);
+    for (std::size_t n = 0; n < points.size(); ++n) {
+        add_point(protons, points[n].interval, points[n].log_energy, photons[n], weights);
+    }
+    return weights;
 }
 
 } // namespace aureole::transport

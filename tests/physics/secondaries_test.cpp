@@ -8,8 +8,10 @@
 
 #include <catch2/catch.hpp>
 
+#include <algorithm>
 #include <cmath>
 #include <map>
+#include <utility>
 #include <vector>
 
 using namespace aureole;
@@ -163,6 +165,69 @@ TEST_CASE("the isospin model has two charged pions for each neutral one", "[phys
         CHECK(secondary_cross_section(SecondaryModel::isospin, continuous, Secondary::electrons, e, t) ==
               Approx(fine).epsilon(1e-6));
     }
+}
+
+TEST_CASE("tabulated secondary spectra agree with the integrals, and so do their sums over protons",
+          "[physics]") {
+    for (const PionModel pions : {continuous, PionModel::kafexhiu_2014_sibyll, PionModel::kelner_2006}) {
+        for (const Secondary secondary : all) {
+            std::map<double, std::pair<double, double>> sums; // of T^-2.7 dT, tabulated and not
+            for (double t = 0.9 * pion_threshold(); t < 5e3 * gev; t *= 1.37) {
+                const SecondarySpectrum spectrum(SecondaryModel::isospin_kelner_2006, pions, secondary, t);
+                double highest = 0;
+                double error = 0;
+                for (double e = 1e-3 * gev; e < t + gev; e *= 1.31) {
+                    const double expected =
+                        secondary_cross_section(SecondaryModel::isospin_kelner_2006, pions, secondary, e, t);
+                    const double found = spectrum(e);
+                    CHECK(found >= 0);
+                    highest = std::max(highest, e * expected);
+                    error = std::max(error, e * std::abs(found - expected));
+                    auto& sum = sums[e];
+                    sum.first += std::pow(t, -1.7) * found;
+                    sum.second += std::pow(t, -1.7) * expected;
+                }
+                INFO("T " << t / gev);
+                CHECK(error <= 2e-5 * highest);
+            }
+            for (const auto& [e, sum] : sums) {
+                INFO("E " << e / gev);
+                if (e < 300 * gev) { // protons end at 5 TeV
+                    CHECK(sum.first == Approx(sum.second).epsilon(4e-5));
+                }
+            }
+        }
+    }
+}
+
+TEST_CASE("moments of tabulated photons are those of the cross-section", "[physics]") {
+    for (const double t : {0.5 * gev, 3 * gev, 800 * gev, 1e6 * gev}) {
+        const PionPhotons photons(continuous, t);
+        const PhotonRange range = pion_photon_range(t);
+        const double peak = std::sqrt(range.min * range.max); // the spectrum bends there
+        for (const double e : {0.5 * range.min, 0.7 * peak, 1.6 * peak}) {
+            const auto found = photons.moments_above(e);
+            for (int k = 0; k < 4; ++k) {
+                const auto part = [&](double from, double to) {
+                    return integrate_panels(
+                        gauss_legendre(12),
+                        [&](double y) {
+                            return std::exp(-k * y) * pion_gamma_cross_section(continuous, std::exp(y), t);
+                        },
+                        std::log(from), std::log(to), 20);
+                };
+                const double from = std::max(e, range.min);
+                const double expected =
+                    from < peak ? part(from, peak) + part(peak, range.max) : part(from, range.max);
+                const double ratio = found[static_cast<std::size_t>(k)] / expected;
+                INFO("T " << t / gev << " E " << e / gev << " k " << k);
+                // high k weigh the lowest energies, where the spectrum ends with a broken power
+                CHECK(ratio == Approx(1).epsilon(0).margin(k < 2 ? 1e-5 : 1e-4));
+            }
+        }
+        CHECK(photons.moments_above(range.max)[0] == 0);
+    }
+    CHECK(PionPhotons(continuous, 0.9 * pion_threshold()).moments_above(1e-3 * gev)[0] == 0);
 }
 
 TEST_CASE("gamma rays, electrons and neutrinos share the pions' energy as published",

@@ -205,6 +205,17 @@ TEST_CASE("protons lose energy to pions once", "[transport][losses]") {
     std::vector<double> loss(9);
     continuous.process[2](particle, loss);
     CHECK(loss[4] == Approx(0.5 * particle.kinetic_energy * rate[4]).epsilon(1e-12));
+    for (const double p : {1e-4 * gev, 0.03 * gev, 3 * gev}) { // the first is slower than thermal electrons
+        const Particle proton =
+            particle_of_momentum(p / constants::speed_of_light, constants::proton_rest_energy);
+        continuous.process[1](proton, loss);
+        for (std::size_t cell = 0; cell < 9; ++cell) {
+            const double temperature = media.temperature.empty() ? 1e4 : media.temperature[cell];
+            CHECK(loss[cell] ==
+                  Approx(physics::proton_coulomb_loss(proton.kinetic_energy, media.hii[cell], temperature))
+                      .epsilon(1e-12));
+        }
+    }
 }
 
 TEST_CASE("secondaries are the integral over the protons", "[transport][secondaries]") {
@@ -221,7 +232,7 @@ TEST_CASE("secondaries are the integral over the protons", "[transport][secondar
     const RunContext context;
     const auto matrix = secondary_matrix(spec, basis, momentum, context);
     const auto density = [](double t) { return std::pow(t / gev, -2.7) / (1 + std::pow(t / gev, -1.5)); };
-    for (const std::size_t row : {0U, 5U, 7U, 10U}) { // odd ones are interpolated
+    for (const std::size_t row : {0U, 5U, 7U, 10U}) {
         const Particle lepton =
             electron(particle_of_momentum(momentum[row], constants::electron_rest_energy).kinetic_energy);
         double sum = 0;

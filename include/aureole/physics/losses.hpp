@@ -74,11 +74,11 @@ double inverse_compton_tabulated_loss(double kinetic_energy,
 /// part of the electron's energy: the continuous form is exact for N ~ E^-2 and 31 % high for E^-3.
 class BremsstrahlungLoss {
   public:
-    /// Tabulates both phases in ln T. About 0.1 s.
+    /// Tabulates both phases in ln T. About 0.03 s.
     explicit BremsstrahlungLoss(double helium = helium_per_hydrogen);
 
     /// -dE/dt in neutral gas, atomic or molecular.
-    /// Accuracy   2e-5 of the integral from 2 MeV (1e-6 at 20 MeV to 10 GeV) to 10 TeV, where the screening
+    /// Accuracy   2e-5 of the integral from 2 MeV (3e-6 at 20 MeV to 10 GeV) to 10 TeV, where the screening
     /// is complete and the loss goes on in proportion to E. Below 2 MeV the cross-sections are not valid:
     /// the loss over beta c E goes on with continuous slope to a constant, a guess that does not matter, for
     /// it is below 0.4 % of the ionisation loss there.
@@ -137,8 +137,11 @@ double proton_ionisation_loss(double kinetic_energy,
 /// (1/2) ln[(m c/hbar)^2 M gamma^2 beta^4/(pi r_e n_e (M + 2 gamma m))], at least 1.
 double proton_coulomb_logarithm(double kinetic_energy, double electron_density);
 
-/// Coulomb loss of a proton to free electrons: 4 pi r_e^2 m c^3 n_e ln L beta^2/(x^3 + beta^3), x^3 = (3
-/// sqrt(pi)/4) (2 k T_e/m c^2)^(3/2). 0 for n_e = 0.
+/// x^3 = (3 sqrt(pi)/4) (2 k T_e/m c^2)^(3/2) of electrons of a temperature [K].
+double electron_thermal_cube(double temperature);
+
+/// Coulomb loss of a proton to free electrons: 4 pi r_e^2 m c^3 n_e ln L beta^2/(x^3 + beta^3), x^3 =
+/// electron_thermal_cube(T_e). 0 for n_e = 0.
 /// Source     Mannheim & Schlickeiser 1994, with the Coulomb logarithm in place of their 20 (it is 30-45:
 /// twice their fit).
 double proton_coulomb_loss(double kinetic_energy, double electron_density, double electron_temperature);
