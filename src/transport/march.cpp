@@ -20,30 +20,15 @@ using Columns = std::vector<std::vector<double>>; ///< [unknowns][cells]
 constexpr double middle = 2 - std::numbers::sqrt2;
 constexpr double implicit_part = middle / 2;
 constexpr double carry_over = (1 - middle) * (1 - middle) / (middle * (2 - middle));
+/// Densities that a guess is extrapolated from, and how far in their logarithm.
+constexpr std::size_t most_known = 3;
+constexpr double largest_extrapolation = 1;
 /// A step is repeated where a density is below minus this part of the largest.
 constexpr double negative_part = 1e-12;
 
 /// Integral from `low` to `high` of a function ~ p^-2, per its value at `low`.
 double fitted_width(double high, double low) {
     return low * (1 - low / high);
-}
-
-void read_losses(const Mesh& mesh, Stage& stage) {
-    stage.loss.assign(mesh.cells(), 0.0);
-    for (const auto& process : stage.data.losses) {
-        for (std::size_t cell = 0; cell < mesh.cells(); ++cell) {
-            stage.loss[cell] += process[cell];
-        }
-    }
-    const auto& divergence = stage.data.divergence;
-    for (std::size_t cell = 0; cell < mesh.cells(); ++cell) {
-        const double rate =
-            stage.loss[cell] + (divergence.empty() ? 0.0 : stage.momentum / 3 * divergence[cell]);
-        if (!(rate >= 0)) {
-            throw MomentumGain(cell, stage.momentum, rate);
-        }
-        stage.loss[cell] = mesh.volume[cell] * rate;
-    }
 }
 
 MomentumTotals totals_of(const Mesh& mesh, const Stage& stage, std::size_t kind) {
@@ -139,7 +124,7 @@ class Marcher {
         node_.leak = node_.density;
         if (*std::max_element(node_.loss.begin(), node_.loss.end()) == 0) {
             solver_.prepare(node_, 1);
-            solver_.solve(node_, node_.leak, {});
+            solve(node_, Columns(node_.leak));
         }
         store(0, 0, node_);
         copy_out(0);
@@ -172,10 +157,11 @@ class Marcher {
             return;
         }
         const double width = std::log(node_.momentum / low.momentum);
-        solver_.solve(half, trapezoid_base(width), shape_of(node_));
-        solver_.solve(low, second_base(half), shape_of(half));
+        solve(half, trapezoid_base(width));
+        solve(low, second_base(half));
         if (has_negative(low)) {
             ++result_.redone_steps;
+            known_.resize(std::min<std::size_t>(1, known_.size()));
             solver_.prepare(half, fitted_width(node_.momentum, half.momentum));
             solver_.prepare(low, fitted_width(half.momentum, low.momentum));
             euler_steps(step, half, low);
@@ -192,8 +178,8 @@ class Marcher {
     }
 
     void euler_steps(std::size_t step, Stage& half, Stage& low) {
-        solver_.solve(half, currents(node_), shape_of(node_));
-        solver_.solve(low, currents(half), shape_of(half));
+        solve(half, currents(node_));
+        solve(low, currents(half));
         store(step, 1, half);
         store(step, 2, low);
         intervals_.push_back({0, 0, half.implicit});
@@ -236,10 +222,41 @@ class Marcher {
         return base;
     }
 
-    /// Density of all kinds, where the limiter starts from; empty if there is none yet.
-    std::vector<double> shape_of(const Stage& stage) const {
-        if (setup_.limiter == Limiter::none) {
+    /// Density of all kinds, to start limiter and response from: the last ones, extrapolated in the
+    /// logarithms by a parabola at most. Empty if there is none yet.
+    std::vector<double> guess_for(double momentum) const {
+        if (!solver_.nonlinear() || known_.empty()) {
             return {};
+        }
+        std::vector<double> weight(known_.size(), 1.0);
+        for (std::size_t a = 0; a < known_.size(); ++a) {
+            for (std::size_t b = 0; b < known_.size(); ++b) {
+                if (a != b) {
+                    weight[a] *= std::log(momentum / known_[b].momentum) /
+                                 std::log(known_[a].momentum / known_[b].momentum);
+                }
+            }
+        }
+        const std::vector<double>& last = known_.back().density;
+        std::vector<double> guess = last;
+        for (std::size_t cell = 0; cell < guess.size() && known_.size() > 1; ++cell) {
+            double sum = 0;
+            bool positive = true;
+            for (std::size_t a = 0; a < known_.size() && positive; ++a) {
+                positive = known_[a].density[cell] > 0;
+                sum += positive ? weight[a] * std::log(known_[a].density[cell] / last[cell]) : 0;
+            }
+            if (positive) {
+                guess[cell] *= std::exp(std::clamp(sum, -largest_extrapolation, largest_extrapolation));
+            }
+        }
+        return guess;
+    }
+
+    void solve(Stage& stage, const Columns& base) {
+        solver_.solve(stage, base, guess_for(stage.momentum));
+        if (!solver_.nonlinear()) {
+            return;
         }
         std::vector<double> sum(mesh_.cells(), 0.0);
         for (std::size_t kind = 0; kind < setup_.kinds; ++kind) {
@@ -247,13 +264,19 @@ class Marcher {
                 sum[cell] += stage.density[kind][cell];
             }
         }
-        return *std::max_element(sum.begin(), sum.end()) > 0 ? sum : std::vector<double>{};
+        if (*std::max_element(sum.begin(), sum.end()) > 0) {
+            known_.push_back({stage.momentum, std::move(sum)});
+            if (known_.size() > most_known) {
+                known_.erase(known_.begin());
+            }
+        }
     }
 
     void store(std::size_t step, std::size_t part, const Stage& stage) {
         for (std::size_t kind = 0; kind < setup_.kinds; ++kind) {
             totals_[kind][2 * step + part] = totals_of(mesh_, stage, kind);
         }
+        result_.held_back += stage.data.held_back;
     }
 
     void copy_out(std::size_t node) { copy_out(node, node_); }
@@ -283,7 +306,9 @@ class Marcher {
             result_.budget.push_back(add_up(totals, intervals_));
         }
         result_.not_converged = solver_.not_converged;
+        result_.largest_change = solver_.largest_change;
         result_.factorizations = solver_.factorizations;
+        result_.solves = solver_.solves;
         result_.pivoted = solver_.pivoted;
         result_.most_limiter_iterations = solver_.most_iterations;
         result_.worst_residual = solver_.worst_residual;
@@ -294,6 +319,11 @@ class Marcher {
     const Mesh& mesh_;
     StageSolver solver_;
     Stage node_;
+    struct Known {
+        double momentum;
+        std::vector<double> density; ///< of all kinds
+    };
+    std::vector<Known> known_;                        ///< descending
     std::vector<std::vector<MomentumTotals>> totals_; ///< [kinds][stages]
     std::vector<IntervalWeights> intervals_;
     MarchResult result_;

@@ -49,17 +49,39 @@ double power_of(const std::vector<SourceSpec>& sources) {
     return sum;
 }
 
+namespace {
+
+OpenPlace
+worst_place(const Problem& problem, const SpeciesProblem& species, std::span<const NotConverged> open) {
+    const auto worst = std::max_element(open.begin(), open.end(),
+                                        [](const auto& a, const auto& b) { return a.change < b.change; });
+    if (worst == open.end()) {
+        return {};
+    }
+    const Place& place = problem.cell_places[worst->cell];
+    return {.momentum = worst->momentum,
+            .kinetic_energy = particle_of_momentum(worst->momentum, species.rest_energy).kinetic_energy,
+            .cell = worst->cell,
+            .radius = place.radius,
+            .height = place.height,
+            .change = worst->change};
+}
+
+} // namespace
+
 MarchReport march_report(const Problem& problem,
                          const std::string& name,
                          const SpeciesProblem& species,
-                         const Run& run,
+                         const SpeciesRun& run,
                          std::span<const double> density) {
     const MarchResult& result = run.result;
     MarchReport report{.name = name,
                        .redone_steps = result.redone_steps,
                        .pivoted = result.pivoted,
                        .factorizations = result.factorizations,
+                       .solves = result.solves,
                        .limiter_not_converged = result.not_converged.size(),
+                       .worst = worst_place(problem, species, result.not_converged),
                        .most_limiter_iterations = result.most_limiter_iterations,
                        .held_back = run.held_back,
                        .worst_residual = result.worst_residual};

@@ -23,7 +23,7 @@ double power_of(const std::vector<SourceSpec>& sources);
 MarchReport march_report(const Problem& problem,
                          const std::string& name,
                          const SpeciesProblem& species,
-                         const Run& run,
+                         const SpeciesRun& run,
                          std::span<const double> density);
 
 /// A budget of the mesh as that of the galaxy.

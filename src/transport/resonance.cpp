@@ -8,13 +8,12 @@
 namespace aureole::transport {
 namespace {
 
-/// Gradients are taken to be at least this part of pressure over outer radius: where the pressure has a
-/// maximum or a plateau waves come from neighbouring places, and logarithms stay finite.
-constexpr double flat = 1e-3;
 using Vector = std::array<double, 2>;
 
+} // namespace
+
 /// Gradients of a function of cells at faces, outer faces, corners and cells.
-class Gradients {
+class LocalResonance::Gradients {
   public:
     explicit Gradients(const Problem& problem) : problem_(problem), at_cell(problem.mesh.cells()) {}
 
@@ -50,6 +49,12 @@ class Gradients {
     std::vector<Vector> at_cell;
 };
 
+namespace {
+
+/// Gradients are taken to be at least this part of pressure over outer radius: where the pressure has a
+/// maximum or a plateau waves come from neighbouring places, and logarithms stay finite.
+constexpr double flat = 1e-3;
+
 /// The part of a gradient along the field, b (b.g); all of it where diffusion is isotropic.
 Vector along_field(const std::array<double, 3>& alignment, const Vector& g) {
     return {alignment[0] * g[0] + alignment[1] * g[1], alignment[1] * g[0] + alignment[2] * g[1]};
@@ -75,75 +80,97 @@ double size_along(const std::array<double, 3>& alignment, const Vector& g) {
 
 } // namespace
 
-Resonance resonance_of(const Problem& problem, std::span<const double> density, bool at_cells) {
-    const Mesh& mesh = problem.mesh;
+LocalResonance::LocalResonance(const Problem& problem, bool at_cells, double width)
+    : problem_(problem), at_cells_(at_cells), width_(width), pressure_(problem.mesh.cells()),
+      gradients_(std::make_unique<Gradients>(problem)) {}
+
+LocalResonance::~LocalResonance() = default;
+
+void LocalResonance::find(double momentum, std::span<const double> density, PlaceResonance& out) {
+    const Mesh& mesh = problem_.mesh;
     const std::size_t cells = mesh.cells();
-    const std::size_t places = at_cells ? cells : problem.march_places.size();
-    const auto& momentum = problem.protons.momentum;
-    const double size = problem.media.grid.x.back();
-    Resonance result;
-    result.log_pressure.resize(momentum.size() * places);
-    result.log_gradient.resize(momentum.size() * places);
-    std::vector<double> pressure(cells);
-    Gradients gradients(problem);
-    for (std::size_t node = 0; node < momentum.size(); ++node) {
-        const Particle particle = particle_of_momentum(momentum[node], problem.protons.rest_energy);
-        const double factor = momentum[node] * momentum[node] * particle.speed / 3;
-        double most = 0;
+    const std::size_t places = at_cells_ ? cells : problem_.march_places.size();
+    const double size = problem_.media.grid.x.back();
+    const Particle particle = particle_of_momentum(momentum, problem_.protons.rest_energy);
+    const double factor = momentum * momentum * particle.speed / 3;
+    double most = 0;
+    for (std::size_t cell = 0; cell < cells; ++cell) {
+        pressure_[cell] = factor * std::max(0.0, density[cell]);
+        most = std::max(most, pressure_[cell]);
+    }
+    const double floor = most > 0 ? 1e-30 * most : 1e-100;
+    gradients_->set(pressure_);
+    out.pressure.resize(places);
+    out.gradient.resize(places);
+    out.direction.resize(at_cells_ ? 0 : mesh.faces.size() + mesh.boundary.size());
+    std::size_t at = 0;
+    const auto put = [&](double here, double gradient) {
+        const double kept = std::max(here, floor);
+        out.pressure[at] = kept;
+        out.gradient[at] = std::hypot(gradient, width_ * flat * kept / size);
+        ++at;
+    };
+    if (at_cells_) {
         for (std::size_t cell = 0; cell < cells; ++cell) {
-            pressure[cell] = factor * std::max(0.0, density[node * cells + cell]);
-            most = std::max(most, pressure[cell]);
+            put(pressure_[cell], size_along(alignment_of(problem_, cell, cell), gradients_->at_cell[cell]));
         }
-        const double floor = most > 0 ? 1e-30 * most : 1e-100;
-        gradients.set(pressure);
-        std::size_t at = node * places;
-        const auto put = [&](double here, double gradient) {
-            const double kept = std::max(here, floor);
-            result.log_pressure[at] = std::log(kept);
-            result.log_gradient[at] = std::log(std::max(gradient, flat * kept / size));
-            ++at;
-        };
-        if (at_cells) {
-            for (std::size_t cell = 0; cell < cells; ++cell) {
-                put(pressure[cell], size_along(alignment_of(problem, cell, cell), gradients.at_cell[cell]));
+        return;
+    }
+    const auto direct = [&](double here, const std::array<double, 3>& alignment, const Vector& g,
+                            std::size_t axis, double along) {
+        const double softened = std::hypot(along, width_ * turning * std::max(here, floor) / size);
+        out.direction[at] = -along_field(alignment, g)[axis] / softened;
+    };
+    for (std::size_t f = 0; f < mesh.faces.size(); ++f) {
+        const Face& face = mesh.faces[f];
+        const auto alignment = alignment_of(problem_, face.first, face.second);
+        const Vector gradient = gradients_->at_face(f);
+        const double here = std::sqrt(pressure_[face.first] * pressure_[face.second]);
+        const double along = size_along(alignment, gradient);
+        direct(here, alignment, gradient, face.axis, along);
+        put(here, along);
+    }
+    for (const BoundaryFace& face : mesh.boundary) {
+        const auto alignment = alignment_of(problem_, face.cell, face.cell);
+        const Vector& gradient = gradients_->at_cell[face.cell];
+        const double along = size_along(alignment, gradient);
+        direct(pressure_[face.cell], alignment, gradient, face.axis, along);
+        out.direction[at] *= face.orientation;
+        put(pressure_[face.cell], along);
+    }
+    for (const Corner& corner : problem_.corners) {
+        Vector gradient{};
+        double mean = 0;
+        std::array<double, 3> alignment{};
+        for (std::size_t a = 0; a < 4; ++a) {
+            const std::uint32_t cell = corner.cell[a];
+            gradient[0] += corner.radial[a] * pressure_[cell];
+            gradient[1] += corner.vertical[a] * pressure_[cell];
+            mean += 0.25 * pressure_[cell];
+            for (std::size_t part = 0; part < 3; ++part) {
+                alignment[part] += 0.25 * problem_.media.alignment[cell][part];
             }
-            continue;
         }
-        const auto direct = [&](double here, const std::array<double, 3>& alignment, const Vector& g,
-                                std::size_t axis) {
-            const double softened =
-                std::hypot(size_along(alignment, g), turning * std::max(here, floor) / size);
-            result.direction.push_back(-along_field(alignment, g)[axis] / softened);
-        };
-        for (std::size_t f = 0; f < mesh.faces.size(); ++f) {
-            const Face& face = mesh.faces[f];
-            direct(std::sqrt(pressure[face.first] * pressure[face.second]),
-                   alignment_of(problem, face.first, face.second), gradients.at_face(f), face.axis);
-            put(std::sqrt(pressure[face.first] * pressure[face.second]),
-                size_along(alignment_of(problem, face.first, face.second), gradients.at_face(f)));
+        put(mean, size_along(alignment, gradient));
+    }
+}
+
+Resonance resonance_of(const Problem& problem, std::span<const double> density, bool at_cells, double width) {
+    const std::size_t cells = problem.mesh.cells();
+    const auto& momentum = problem.protons.momentum;
+    LocalResonance local(problem, at_cells, width);
+    PlaceResonance row;
+    Resonance result;
+    const auto append_log = [](const std::vector<double>& values, std::vector<double>& to) {
+        for (const double value : values) {
+            to.push_back(std::log(value));
         }
-        for (const BoundaryFace& face : mesh.boundary) {
-            direct(pressure[face.cell], alignment_of(problem, face.cell, face.cell),
-                   gradients.at_cell[face.cell], face.axis);
-            result.direction.back() *= face.orientation;
-            put(pressure[face.cell],
-                size_along(alignment_of(problem, face.cell, face.cell), gradients.at_cell[face.cell]));
-        }
-        for (const Corner& corner : problem.corners) {
-            Vector gradient{};
-            double mean = 0;
-            std::array<double, 3> alignment{};
-            for (std::size_t a = 0; a < 4; ++a) {
-                const std::uint32_t cell = corner.cell[a];
-                gradient[0] += corner.radial[a] * pressure[cell];
-                gradient[1] += corner.vertical[a] * pressure[cell];
-                mean += 0.25 * pressure[cell];
-                for (std::size_t part = 0; part < 3; ++part) {
-                    alignment[part] += 0.25 * problem.media.alignment[cell][part];
-                }
-            }
-            put(mean, size_along(alignment, gradient));
-        }
+    };
+    for (std::size_t node = 0; node < momentum.size(); ++node) {
+        local.find(momentum[node], density.subspan(node * cells, cells), row);
+        append_log(row.pressure, result.log_pressure);
+        append_log(row.gradient, result.log_gradient);
+        result.direction.insert(result.direction.end(), row.direction.begin(), row.direction.end());
     }
     return result;
 }

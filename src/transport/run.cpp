@@ -15,6 +15,8 @@ namespace {
 constexpr int side_rounds = 4;
 /// Part of the losses that converging streaming leaves; 0 would make systems singular.
 constexpr double kept_loss = 0.01;
+/// Width of the edge of that bound, in parts of it.
+constexpr double rounded = 0.05;
 
 double alignment_at(const Problem& problem, std::uint32_t cell, std::uint32_t axis) {
     return problem.media.alignment[cell][axis == 0 ? 0 : 2];
@@ -38,7 +40,7 @@ class Evaluator {
               const SourceFunction& sources,
               const RunOptions& options)
         : problem_(problem), species_(species), scattering_(scattering), sources_(sources), options_(options),
-          rate_(problem.march_places.size()) {
+          rate_(problem.march_places.size()), local_(problem, false, scattering.width) {
         for (const Corner& corner : problem.corners) {
             alignment_.push_back(corner_alignment(problem, corner));
         }
@@ -54,18 +56,52 @@ class Evaluator {
         const Particle particle = particle_of_momentum(momentum, species_.rest_energy);
         const std::size_t cells = problem_.mesh.cells();
         data.kinetic_energy = particle.kinetic_energy;
-        set_space(particle, data.space);
+        if (scattering_.self_made_from) {
+            rates(*scattering_.self_made_from, particle, {}, rate_, limits_of(problem_));
+            set_space(particle, false, data.space);
+        } else {
+            find_rates(particle);
+            if (options_.streaming != Streaming::none) {
+                linear_at(scattering_.resonance.direction, problem_.protons.momentum, momentum,
+                          problem_.mesh.faces.size() + problem_.mesh.boundary.size(), row_.direction);
+                set_drift();
+            }
+            set_space(particle, options_.streaming != Streaming::none, data.space);
+        }
         momentum_losses(species_.losses, particle, cells, data.losses);
         if (species_.losses.catastrophic) {
             data.space.rate.resize(cells);
             species_.losses.catastrophic(particle, data.space.rate);
         }
-        set_divergence(particle, data);
+        if (scattering_.self_made_from || options_.streaming == Streaming::none) {
+            data.divergence = wind_divergence_;
+        } else {
+            held_back += set_divergence(particle, data);
+        }
         data.sources.resize(options_.kinds);
         for (auto& source : data.sources) {
             source.assign(cells, 0.0);
         }
         sources_(momentum, data.sources);
+    }
+
+    /// Rates, drift and its heating with waves made by a density of protons [cells].
+    void respond(double momentum, std::span<const double> density, MomentumData& data) {
+        const Particle particle = particle_of_momentum(momentum, species_.rest_energy);
+        local_.find(momentum, density, row_);
+        rates(scattering_.at_march, particle, {row_.pressure, row_.gradient}, rate_, {});
+        const double least = limits_of(problem_).least;
+        for (double& rate : rate_) {
+            rate += least;
+        }
+        const bool drifting = options_.streaming != Streaming::none;
+        if (drifting) {
+            set_drift();
+        }
+        set_space(particle, drifting, data.space);
+        if (drifting) {
+            data.held_back = set_divergence(particle, data);
+        }
     }
 
     std::size_t held_back = 0;
@@ -82,20 +118,18 @@ class Evaluator {
         }
     }
 
-    /// Speeds of the drift through faces at a momentum, and its divergence.
-    void set_drift(double momentum) {
+    /// Speeds of the drift through faces along row_.direction, and its divergence.
+    void set_drift() {
         const Mesh& mesh = problem_.mesh;
         const std::size_t faces = mesh.faces.size();
-        linear_at(scattering_.resonance.direction, problem_.protons.momentum, momentum,
-                  faces + mesh.boundary.size(), direction_);
         drift_.face.resize(faces);
         drift_.boundary.resize(mesh.boundary.size());
         for (std::size_t f = 0; f < faces; ++f) {
-            drift_.face[f] = alfven_[f] * direction_[f];
+            drift_.face[f] = alfven_[f] * row_.direction[f];
         }
         for (std::size_t f = 0; f < mesh.boundary.size(); ++f) {
             const bool closed = problem_.sides[mesh.boundary[f].side].kind == BoundaryKind::reflecting;
-            drift_.boundary[f] = closed ? 0.0 : alfven_[faces + f] * direction_[faces + f];
+            drift_.boundary[f] = closed ? 0.0 : alfven_[faces + f] * row_.direction[faces + f];
         }
         drift_divergence_ = flow_divergence(mesh, drift_.face, drift_.boundary);
     }
@@ -107,18 +141,22 @@ class Evaluator {
         }
     }
 
-    void set_space(const Particle& particle, SpatialCoefficients& space) {
-        const std::size_t faces = problem_.mesh.faces.size();
-        const std::size_t outer = problem_.mesh.boundary.size();
+    /// Resonance and rates where waves are made by protons that are known.
+    void find_rates(const Particle& particle) {
         ResonantPressure resonant;
         if (!scattering_.resonance.empty()) {
             const auto& nodes = problem_.protons.momentum;
             const std::size_t places = rate_.size();
-            resonance_at(scattering_.resonance.log_pressure, nodes, particle.momentum, places, pressure_);
-            resonance_at(scattering_.resonance.log_gradient, nodes, particle.momentum, places, gradient_);
-            resonant = {pressure_, gradient_};
+            resonance_at(scattering_.resonance.log_pressure, nodes, particle.momentum, places, row_.pressure);
+            resonance_at(scattering_.resonance.log_gradient, nodes, particle.momentum, places, row_.gradient);
+            resonant = {row_.pressure, row_.gradient};
         }
         rates(scattering_.at_march, particle, resonant, rate_, limits_of(problem_));
+    }
+
+    void set_space(const Particle& particle, bool drifting, SpatialCoefficients& space) {
+        const std::size_t faces = problem_.mesh.faces.size();
+        const std::size_t outer = problem_.mesh.boundary.size();
         parallel_.resize(rate_.size());
         for (std::size_t i = 0; i < rate_.size(); ++i) {
             parallel_[i] = particle.speed * particle.speed / (3 * rate_[i]);
@@ -127,15 +165,12 @@ class Evaluator {
         space.boundary_flow = problem_.wind.boundary;
         std::vector<double>* const fully = problem_.corners.empty() ? &parallel_ : &streamed_;
         streamed_.assign(rate_.size(), 0.0);
-        if (options_.streaming != Streaming::none) {
-            set_drift(particle.momentum);
-        }
-        if (options_.streaming == Streaming::diffusion) {
-            const double size = problem_.media.grid.x.back();
+        if (drifting && options_.streaming == Streaming::diffusion) {
+            const double size = problem_.media.grid.x.back() / scattering_.width;
             for (std::size_t i = 0; i < rate_.size(); ++i) {
-                (*fully)[i] += alfven_[i] / std::hypot(gradient_[i] / pressure_[i], turning / size);
+                (*fully)[i] += alfven_[i] / std::hypot(row_.gradient[i] / row_.pressure[i], turning / size);
             }
-        } else if (options_.streaming == Streaming::flow) {
+        } else if (drifting) {
             add(drift_.face, space.flow);
             add(drift_.boundary, space.boundary_flow);
         }
@@ -188,11 +223,10 @@ class Evaluator {
         }
     }
 
-    void set_divergence(const Particle& particle, MomentumData& data) {
+    /// Wind and drift together; returns the cells in which the drift was held back.
+    std::size_t set_divergence(const Particle& particle, MomentumData& data) const {
+        std::size_t held = 0;
         data.divergence = wind_divergence_;
-        if (options_.streaming == Streaming::none) {
-            return;
-        }
         data.divergence.resize(drift_divergence_.size());
         for (std::size_t cell = 0; cell < data.divergence.size(); ++cell) {
             double loss = 0;
@@ -201,13 +235,17 @@ class Evaluator {
             }
             const double least = -(1 - kept_loss) * 3 / particle.momentum * loss;
             double& sum = data.divergence[cell];
-            if (sum >= least && sum + drift_divergence_[cell] < least) {
-                sum = least;
-                ++held_back;
-            } else {
-                sum += drift_divergence_[cell];
+            const double with_drift = sum + drift_divergence_[cell];
+            if (sum < least) {
+                sum = with_drift;
+                continue;
             }
+            held += with_drift < least ? 1 : 0;
+            // max(with_drift, least) with its edge rounded off
+            const double above = with_drift - least;
+            sum = least + 0.5 * (above + std::hypot(above, rounded * least));
         }
+        return held;
     }
 
     const Problem& problem_;
@@ -215,11 +253,13 @@ class Evaluator {
     const Scattering& scattering_;
     const SourceFunction& sources_;
     const RunOptions& options_;
-    std::vector<double> rate_, pressure_, gradient_, frozen_;
-    std::vector<double> parallel_, streamed_, alfven_, direction_;
+    std::vector<double> rate_, frozen_;
+    std::vector<double> parallel_, streamed_, alfven_;
     std::vector<double> wind_divergence_, drift_divergence_;
     std::vector<CornerTensor> alignment_;
     Flow drift_;
+    LocalResonance local_;
+    PlaceResonance row_;
 };
 
 } // namespace
@@ -294,27 +334,33 @@ void resonance_at(std::span<const double> log_values,
     }
 }
 
-Run run_species(const Problem& problem,
-                const SpeciesProblem& species,
-                const Scattering& scattering,
-                const SourceFunction& sources,
-                const RunOptions& options,
-                const RunContext& context) {
+SpeciesRun run_species(const Problem& problem,
+                       const SpeciesProblem& species,
+                       const Scattering& scattering,
+                       const SourceFunction& sources,
+                       const RunOptions& options,
+                       const RunContext& context) {
     Evaluator evaluate(problem, species, scattering, sources, options);
-    const MarchSetup setup{.mesh = problem.mesh,
-                           .corners = problem.corners,
-                           .sides = problem.sides,
-                           .momentum = species.momentum,
-                           .kinds = options.kinds,
-                           .limiter = options.limiter,
-                           .limiter_tolerance = options.limiter_tolerance,
-                           .limiter_iterations = options.limiter_iterations,
-                           .ages = false,
-                           .evaluate = std::ref(evaluate)};
+    MarchSetup setup{.mesh = problem.mesh,
+                     .corners = problem.corners,
+                     .sides = problem.sides,
+                     .momentum = species.momentum,
+                     .kinds = options.kinds,
+                     .limiter = options.limiter,
+                     .limiter_tolerance = options.limiter_tolerance,
+                     .limiter_iterations = options.limiter_iterations,
+                     .ages = false,
+                     .evaluate = std::ref(evaluate),
+                     .respond = {}};
+    if (scattering.self_made_from) {
+        setup.respond = [&](double momentum, std::span<const double> density, MomentumData& data) {
+            evaluate.respond(momentum, density, data);
+        };
+    }
     try {
-        Run run;
+        SpeciesRun run;
         run.result = march(setup, context);
-        run.held_back = evaluate.held_back;
+        run.held_back = evaluate.held_back + run.result.held_back;
         return run;
     } catch (const MomentumGain& gain) {
         const Place& place = problem.cell_places[gain.cell];

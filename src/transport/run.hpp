@@ -9,6 +9,7 @@
 #include <cstddef>
 #include <functional>
 #include <memory>
+#include <optional>
 #include <span>
 #include <vector>
 
@@ -24,6 +25,30 @@ struct Resonance {
     bool empty() const { return log_gradient.empty(); }
 };
 
+/// Protons of one momentum [places]: dP/dlnp and its gradient along the field, and the direction of the drift
+/// as in Resonance.
+struct PlaceResonance {
+    std::vector<double> pressure, gradient, direction;
+};
+
+/// Finds resonances, momentum by momentum.
+class LocalResonance {
+  public:
+    /// width      factor of both regularisations: of flat pressures and of the turning drift
+    LocalResonance(const Problem& problem, bool at_cells, double width);
+    ~LocalResonance();
+    /// density    of protons [cells]
+    void find(double momentum, std::span<const double> density, PlaceResonance& out);
+
+  private:
+    class Gradients;
+    const Problem& problem_;
+    bool at_cells_;
+    double width_;
+    std::vector<double> pressure_;
+    std::unique_ptr<Gradients> gradients_;
+};
+
 /// How drifting with the waves is put into a march.
 enum class Streaming {
     none,
@@ -37,6 +62,10 @@ struct Scattering {
     PreparedLaw at_march;
     Resonance resonance; ///< at march_places; empty where the law does not ask
     bool streaming = false;
+    double width = 1; ///< of the regularisations
+    /// Waves made by the marched protons themselves: their resonance is found with their density, from the
+    /// rates of this law as a first guess. Empty: the resonance above counts.
+    std::optional<PreparedLaw> self_made_from;
 };
 
 /// Mean free paths of light are at most this many outer radii: longer ones change nothing but make the linear
@@ -86,18 +115,18 @@ struct RunOptions {
 };
 
 /// A march and how often streaming was kept from adding energy.
-struct Run {
+struct SpeciesRun {
     MarchResult result;
     std::size_t held_back = 0; ///< cells and momenta
 };
 
 /// Throws Error(scenario) naming the place where a wind compresses faster than particles lose energy.
-Run run_species(const Problem& problem,
-                const SpeciesProblem& species,
-                const Scattering& scattering,
-                const SourceFunction& sources,
-                const RunOptions& options,
-                const RunContext& context);
+SpeciesRun run_species(const Problem& problem,
+                       const SpeciesProblem& species,
+                       const Scattering& scattering,
+                       const SourceFunction& sources,
+                       const RunOptions& options,
+                       const RunContext& context);
 
 /// Primary sources of a species, of one kind.
 SourceFunction primary_sources(const SpeciesProblem& species);
@@ -111,10 +140,11 @@ std::vector<double>
 moment(std::span<const double> weights, std::span<const double> weighted, std::size_t cells);
 
 /// Resonance at march_places (of cells: `cells`) from a density of protons.
-Resonance resonance_of(const Problem& problem, std::span<const double> density, bool at_cells);
+Resonance
+resonance_of(const Problem& problem, std::span<const double> density, bool at_cells, double width = 1);
 
 /// Where the pressure changes by less than this part over the outer radius, drifting is softened and turns
-/// around. Ten times less keeps the iteration of confined laws from settling.
+/// around.
 inline constexpr double turning = 0.1;
 
 } // namespace aureole::transport

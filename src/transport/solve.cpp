@@ -12,15 +12,16 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numeric>
 
 namespace aureole::transport {
 namespace {
 
-constexpr int most_iterations = 60;
-constexpr double confined_tolerance = 5e-4;
-/// Limiter in the iterations of a confined law; its last march has the usual one.
-constexpr double loose_limiter = 1e-3;
-constexpr int few_limiter_rounds = 15;
+/// Of densities whose waves they make, and of electrons among those waves.
+constexpr double confined_tolerance = 1e-5;
+constexpr double confined_anchor = 1e-4;
+/// Of densities that are only compared.
+constexpr double loose_tolerance = 1e-3;
 
 double momentum_of(double rigidity) {
     return rigidity * constants::elementary_charge / constants::speed_of_light;
@@ -30,7 +31,7 @@ double momentum_of(double rigidity) {
 struct Protons {
     Scattering scattering;
     double factor = 1;
-    Run run;
+    SpeciesRun run;
     ConfinementReport confinement;
     std::vector<double> weighted;
     const std::vector<double>& density() const { return run.result.density[0]; }
@@ -38,8 +39,11 @@ struct Protons {
 
 class Solver {
   public:
-    Solver(const Problem& problem, const NamedLaw& law, const RunContext& context)
-        : problem_(problem), named_(law), context_(context), law_(checked_law(law.law)),
+    Solver(const Problem& problem,
+           const NamedLaw& law,
+           const RunContext& context,
+           const SolveOptions& options)
+        : problem_(problem), named_(law), context_(context), options_(options), law_(checked_law(law.law)),
           cells_(problem.mesh.cells()), resonant_(depends_on_cosmic_rays(law_)) {
         choose_place();
         if (resonant_ && !problem.spec.protons) {
@@ -75,7 +79,7 @@ class Solver {
             scattering = scattered_by(anchored_law(1, {}), {});
             add_electrons(scattering, {}, solution);
         }
-        report_rates(scattering, solution);
+        report_rates(scattering);
         return solution;
     }
 
@@ -143,82 +147,66 @@ class Solver {
                                              named_.anchor.value, local.pressure, local.gradient);
             return {result.law, result.factor};
         }
+        return scaled_law(factor);
+    }
+
+    std::pair<Law, double> scaled_law(double factor) const {
         Law law = law_;
         law.scale *= factor;
         return {law, factor};
     }
 
     Scattering scattered_by(const std::pair<Law, double>& law, Resonance resonance) const {
-        return {law.first, prepare(law.first, problem_.march_places), std::move(resonance),
-                resonant_ && problem_.spec.streaming};
+        return {law.first,
+                prepare(law.first, problem_.march_places),
+                std::move(resonance),
+                resonant_ && problem_.spec.streaming,
+                1,
+                {}};
     }
 
     static Streaming drift(const Scattering& scattering) {
         return scattering.streaming ? Streaming::flow : Streaming::none;
     }
 
-    Run march_protons(const Scattering& scattering, bool loosely) const {
-        RunOptions options{.limiter = problem_.limiter,
-                           .streaming = scattering.streaming ? Streaming::diffusion : Streaming::none};
-        if (loosely) {
-            options.limiter_tolerance = loose_limiter;
-            options.limiter_iterations = few_limiter_rounds;
-        }
+    SpeciesRun march_protons(const Scattering& scattering, double tolerance) const {
+        const RunOptions options{.limiter = problem_.limiter,
+                                 .limiter_tolerance = tolerance,
+                                 .streaming = scattering.streaming ? Streaming::diffusion : Streaming::none};
         return run_species(problem_, problem_.protons, scattering, primary_sources(problem_.protons), options,
                            context_);
     }
 
+    double tolerance() const { return resonant_ ? confined_tolerance : RunOptions{}.limiter_tolerance; }
+
     Protons protons_with(double factor) {
         ++report_->solutions;
+        return protons_with(factor, 1, tolerance());
+    }
+
+    Protons protons_with(double factor, double width, double to) const {
         Protons protons;
         protons.confinement.needed = resonant_;
+        const auto law = resonant_ ? scaled_law(factor) : anchored_law(factor, {});
+        protons.scattering = scattered_by(law, {});
+        protons.factor = law.second;
+        protons.scattering.width = width;
         if (resonant_) {
-            confine(factor, protons);
-        } else {
-            const auto law = anchored_law(factor, {});
-            protons.scattering = scattered_by(law, {});
-            protons.factor = law.second;
+            const Law start = checked_law(
+                {.name = "rigidity_power", .numbers = {}, .lists = {}, .texts = {}, .children = {}});
+            protons.scattering.self_made_from = prepare(start, problem_.march_places);
         }
-        protons.run = march_protons(protons.scattering, false);
+        protons.run = march_protons(protons.scattering, to);
+        if (resonant_) {
+            protons.scattering.self_made_from.reset();
+            protons.scattering.resonance = resonance_of(problem_, protons.density(), false, width);
+            protons.confinement.converged = protons.run.result.not_converged.empty();
+            protons.confinement.change.assign(1, protons.run.result.largest_change);
+            protons.confinement.factorizations = protons.run.result.factorizations;
+            protons.confinement.solves = protons.run.result.solves;
+        }
         protons.weighted = weighted_density(problem_.protons, protons.density(), cells_);
         return protons;
-    }
-
-    /// Iterates rates and densities.
-    void confine(double factor, Protons& protons) {
-        const Law start =
-            checked_law({.name = "rigidity_power", .numbers = {}, .lists = {}, .texts = {}, .children = {}});
-        Scattering first{start, prepare(start, problem_.march_places), {}, false};
-        std::vector<double> density = march_protons(first, true).result.density[0];
-        Resonance mixed = resonance_of(problem_, density, false);
-        for (int iteration = 0; iteration < most_iterations; ++iteration) {
-            const bool rate = named_.anchor.kind == AnchorSpec::Kind::rate;
-            const auto law = anchored_law(factor, rate ? resonance_of(problem_, density, true) : Resonance{});
-            protons.scattering = scattered_by(law, mixed);
-            protons.factor = law.second;
-            std::vector<double> next = march_protons(protons.scattering, true).result.density[0];
-            protons.confinement.change.push_back(density_change(problem_, density, next));
-            density = std::move(next);
-            if (protons.confinement.change.back() <= confined_tolerance) {
-                return;
-            }
-            mix(resonance_of(problem_, density, false), mixed);
-        }
-        protons.confinement.converged = false;
-    }
-
-    /// Moves the resonance towards what was found. Rates rise with the gradient, which they lower: without
-    /// streaming going beyond is faster; drifting turns around with the gradient and needs small steps.
-    void mix(const Resonance& found, Resonance& mixed) const {
-        const auto move = [](const std::vector<double>& to, double share, std::vector<double>& from) {
-            for (std::size_t i = 0; i < from.size(); ++i) {
-                from[i] += share * (to[i] - from[i]);
-            }
-        };
-        const bool streaming = problem_.spec.streaming;
-        move(found.log_pressure, streaming ? 0.6 : 1.0, mixed.log_pressure);
-        move(found.log_gradient, streaming ? 0.6 : 1.4, mixed.log_gradient);
-        move(found.direction, streaming ? 0.25 : 1.0, mixed.direction);
     }
 
     double energy_density(const Protons& protons) const {
@@ -286,8 +274,13 @@ class Solver {
             const auto density = tracers(problem_.protons, protons.scattering, protons.density());
             return tracer_at(problem_.protons, density[1], protons.density(), momentum);
         }
+        case AnchorSpec::Kind::rate: {
+            const Local local =
+                local_resonance(resonance_of(problem_, protons.density(), true), named_.anchor.rigidity);
+            return rate_at(protons.scattering.law, place_, reference_particle(named_.anchor.rigidity),
+                           local.pressure, local.gradient);
+        }
         case AnchorSpec::Kind::absolute:
-        case AnchorSpec::Kind::rate:
             break;
         }
         return 0;
@@ -299,13 +292,16 @@ class Solver {
             return "energy density";
         case AnchorSpec::Kind::gamma_luminosity:
             return "gamma-ray luminosity";
+        case AnchorSpec::Kind::rate:
+            return "scattering rate";
         default:
             return "grammage";
         }
     }
 
     Protons find_protons() {
-        if (!needs_search()) {
+        const bool found_by_rate = resonant_ && named_.anchor.kind == AnchorSpec::Kind::rate;
+        if (!needs_search() && !found_by_rate) {
             return protons_with(1);
         }
         Protons last;
@@ -315,8 +311,23 @@ class Solver {
                 report_->achieved = quantity(last);
                 return report_->achieved;
             },
-            named_.anchor.value, quantity_name());
+            named_.anchor.value, quantity_name(), resonant_ ? confined_anchor : 1e-7);
         return last;
+    }
+
+    /// Protons with the regularisation halved and doubled.
+    void compare_regularisations(const Protons& protons, ConfinementReport& report) const {
+        const auto total = [&](const Protons& of) {
+            const auto energy = moment(energy_weights(*problem_.protons.basis), of.weighted, cells_);
+            return std::inner_product(energy.begin(), energy.end(), problem_.mesh.volume.begin(), 0.0);
+        };
+        for (const double width : {0.5, 2.0}) {
+            const Protons other = protons_with(protons.factor, width, loose_tolerance);
+            report.regularised.push_back({.width = width,
+                                          .energy_density = energy_density(other),
+                                          .total_energy = total(other) / total(protons),
+                                          .converged = other.confinement.converged});
+        }
     }
 
     void add_protons(const Protons& protons, Solution& solution) {
@@ -325,6 +336,9 @@ class Solver {
             cell_resonance_ = resonance_of(problem_, protons.density(), true);
         }
         solution.confinement = protons.confinement;
+        if (resonant_ && options_.regularisation) {
+            compare_regularisations(protons, solution.confinement);
+        }
         solution.pressure = moment(pressure_weights(*problem_.protons.basis), protons.weighted, cells_);
         solution.energy_density = moment(energy_weights(*problem_.protons.basis), protons.weighted, cells_);
         report_->factor = protons.factor;
@@ -391,9 +405,11 @@ class Solver {
                 out[2][cell] += problem_.hydrogen[cell] * std::max(0.0, positrons(c, row));
             }
         };
-        const RunOptions options{
-            .kinds = secondaries ? 3U : 1U, .limiter = problem_.limiter, .streaming = drift(scattering)};
-        Run run = run_species(problem_, species, scattering, sources, options, context_);
+        const RunOptions options{.kinds = secondaries ? 3U : 1U,
+                                 .limiter = problem_.limiter,
+                                 .limiter_tolerance = tolerance(),
+                                 .streaming = drift(scattering)};
+        SpeciesRun run = run_species(problem_, species, scattering, sources, options, context_);
         std::vector<double> all = run.result.density[0];
         for (std::size_t kind = 1; kind < run.result.density.size(); ++kind) {
             for (std::size_t i = 0; i < all.size(); ++i) {
@@ -489,12 +505,19 @@ class Solver {
     void warn(const MarchReport& report) const {
         if (report.limiter_not_converged > 0) {
             context_.say(LogLevel::warning,
-                         fmt::format("law '{}', {}: the flux limiter did not converge at {} momenta",
-                                     named_.name, report.name, report.limiter_not_converged));
+                         fmt::format("law '{}', {}: {} did not converge at {} momenta; the last change of "
+                                     "the density was up to {:.2g}, at {:.4g} GeV, R = {:.4g} kpc, z = "
+                                     "{:.4g} kpc",
+                                     named_.name, report.name,
+                                     resonant_ ? "waves and flux limiter" : "the flux limiter",
+                                     report.limiter_not_converged, report.worst.change,
+                                     report.worst.kinetic_energy / constants::gigaelectronvolt,
+                                     report.worst.radius / constants::kiloparsec,
+                                     report.worst.height / constants::kiloparsec));
         }
     }
 
-    void report_rates(const Scattering& scattering, const Solution& solution) {
+    void report_rates(const Scattering& scattering) {
         const Local local = local_resonance(cell_resonance_, empirical_rigidity());
         report_->rate = rate_at(scattering.law, place_, reference_particle(empirical_rigidity()),
                                 local.pressure, local.gradient);
@@ -505,18 +528,12 @@ class Solver {
             report_->achieved = rate_at(scattering.law, place_, reference_particle(named_.anchor.rigidity),
                                         there.pressure, there.gradient);
         }
-        if (!solution.confinement.converged) {
-            context_.say(LogLevel::warning,
-                         fmt::format("law '{}': scattering and cosmic rays did not settle in {} iterations; "
-                                     "the last change was {:.2g}",
-                                     named_.name, solution.confinement.change.size(),
-                                     solution.confinement.change.back()));
-        }
     }
 
     const Problem& problem_;
     const NamedLaw& named_;
     const RunContext& context_;
+    const SolveOptions& options_;
     Law law_;
     std::size_t cells_;
     bool resonant_;
@@ -529,9 +546,10 @@ class Solver {
 
 } // namespace
 
-Solution solve(const Problem& problem, const NamedLaw& law, const RunContext& context) {
+Solution
+solve(const Problem& problem, const NamedLaw& law, const RunContext& context, const SolveOptions& options) {
     try {
-        return Solver(problem, law, context).run();
+        return Solver(problem, law, context, options).run();
     } catch (Error& error) {
         if (error.kind() == ErrorKind::scenario) {
             error.in("law '" + law.name + "'");
@@ -544,8 +562,9 @@ Solution solve(const TransportSpec& spec,
                const NamedLaw& law,
                const grid::Grid& grid,
                const media::Media& media,
-               const RunContext& context) {
-    return solve(prepare_problem(spec, grid, media, context), law, context);
+               const RunContext& context,
+               const SolveOptions& options) {
+    return solve(prepare_problem(spec, grid, media, context), law, context, options);
 }
 
 } // namespace aureole::transport

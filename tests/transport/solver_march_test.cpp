@@ -205,3 +205,62 @@ TEST_CASE("one and two threads give the same bits, other kernels the same twelve
         REQUIRE(baseline.density[0][i] == Approx(one_thread.density[0][i]).epsilon(1e-11));
     }
 }
+
+TEST_CASE("below the last momentum of a sharp source the limiter finds nothing, and says so quietly",
+          "[transport][solver]") {
+    const auto slab = make_column(sinh_edges(5 * kpc, 20, 2));
+    for (const double loss : {1e-30, 1e-22, 1e-16}) {
+        auto setup = setup_of(slab.mesh, {BoundaryKind::free_escape}, descending(100, 0.1, 6));
+        setup.limiter = Limiter::square_root;
+        setup.evaluate = [&](double momentum, MomentumData& data) {
+            set_plain(slab.mesh, momentum, 1e31, data);
+            data.losses[0].assign(slab.mesh.cells(), loss * momentum);
+            data.sources[0][0] = momentum > 5 ? std::pow(momentum, -2.3) : 0.0;
+        };
+        const auto result = march(setup, {});
+        INFO("losses " << loss);
+        CHECK(std::abs(result.budget[0].defect.number) < 1e-10);
+        CHECK(result.not_converged.empty());
+        for (const double density : result.density[0]) {
+            REQUIRE(std::isfinite(density));
+        }
+        const auto last = at_node(slab.mesh, result, setup.momentum.size() - 1);
+        CHECK(last[0] < 1e-3 * at_node(slab.mesh, result, 1)[0]);
+    }
+}
+
+TEST_CASE("a diffusivity that depends on the gradient gives the profile of its flux", "[transport][solver]") {
+    // D = D0 |N'/g0|^m, thin source q: the flux D0 g0 |N'/g0|^(1 + m) = q is the same at all heights.
+    const auto slab = make_column(sinh_edges(5 * kpc, 30, 2));
+    const double d0 = 3e28;
+    for (const double power : {-0.9, -0.5, 1.0}) {
+        auto setup = setup_of(slab.mesh, {BoundaryKind::free_escape}, {4.0, 2.0, 1.0});
+        const double g0 = 1 / kpc;
+        setup.evaluate = [&](double momentum, MomentumData& data) {
+            set_plain(slab.mesh, momentum, d0, data);
+            data.sources[0][0] = momentum * d0 * g0 / slab.mesh.volume[0];
+        };
+        setup.respond = [&](double, std::span<const double> density, MomentumData& data) {
+            for (std::size_t f = 0; f < slab.mesh.faces.size(); ++f) {
+                const Face& face = slab.mesh.faces[f];
+                const double slope = std::abs(density[face.first] - density[face.second]) /
+                                     (face.first_distance + face.second_distance);
+                data.space.diffusion[f] = d0 * std::pow(slope / g0, power);
+            }
+            const std::size_t top = slab.mesh.boundary[0].cell;
+            data.space.boundary_diffusion[0] =
+                d0 * std::pow(density[top] / slab.mesh.boundary[0].distance / g0, power);
+        };
+        const auto result = march(setup, {});
+        CHECK(result.not_converged.empty());
+        CHECK(result.factorizations < 150);
+        for (std::size_t node = 0; node < setup.momentum.size(); ++node) {
+            const double slope = g0 * std::pow(setup.momentum[node], 1 / (1 + power));
+            for (std::size_t i = 0; i < slab.mesh.cells(); ++i) {
+                INFO("power " << power << ", node " << node << ", cell " << i);
+                REQUIRE(at_node(slab.mesh, result, node)[i] ==
+                        Approx(slope * (5 * kpc - slab.middle[i])).epsilon(1e-7));
+            }
+        }
+    }
+}

@@ -21,6 +21,7 @@ struct MomentumData {
     std::vector<std::vector<double>> losses; ///< [processes][cells] -dp/dt by each, g cm s-2, >= 0
     std::vector<double> divergence; ///< [cells] div w, s-1, of the adiabatic loss p/3 div w; empty: none
     std::vector<std::vector<double>> sources; ///< [kinds][cells] Q, cm-3 s-1 (g cm s-1)-1
+    std::size_t held_back = 0; ///< cells in which `respond` kept particles from gaining momentum
 };
 
 struct MarchSetup {
@@ -30,15 +31,21 @@ struct MarchSetup {
     std::vector<double> momentum;    ///< [nodes] g cm s-1, descending, at least 2
     std::size_t kinds = 1;           ///< of particles that differ only in their sources
     Limiter limiter = Limiter::none; ///< for all kinds together
-    double limiter_tolerance = 1e-8; ///< largest relative change of the density in the last iteration
-    int limiter_iterations = 200;
-    bool ages = false; ///< also the mean ages
+    /// Of limiter and response: largest relative change of the density in the last iteration
+    double limiter_tolerance = 1e-8;
+    int limiter_iterations = 200; ///< at one momentum
+    bool ages = false;            ///< also the mean ages
     /// Called from the calling thread, once for each of the nodes and of the momenta in between (see
     /// march_momenta), descending. The data may hold what an earlier call put there: overwrite all of it.
     std::function<void(double momentum, MomentumData& data)> evaluate;
+    /// Where the medium depends on the particles: overwrites `space`, `divergence` and `held_back` for a
+    /// density > 0 [cells] of all kinds together, at a momentum that `evaluate` was called for, of whose
+    /// `space` the first guess is made. A cell of the density may only matter within one cell around it.
+    /// Called many times, from one thread at a time and never together with `evaluate`. Empty: no response.
+    std::function<void(double momentum, std::span<const double> density, MomentumData& data)> respond = {};
 };
 
-/// Where the limiter's iteration did not reach its tolerance.
+/// Where the iteration for limiter and response did not reach its tolerance.
 struct NotConverged {
     double momentum = 0; ///< g cm s-1
     std::size_t cell = 0;
@@ -52,9 +59,11 @@ struct MarchResult {
     std::vector<float> limited; ///< [nodes x cells] smallest L on the faces of a cell; empty without limiter
     std::vector<Budget> budget; ///< [kinds]
     std::vector<NotConverged> not_converged;
+    double largest_change = 0;    ///< relative, of any density in the last iteration at any momentum
+    std::size_t held_back = 0;    ///< cells and momenta
     std::size_t redone_steps = 0; ///< steps repeated with the positive scheme
-    std::size_t factorizations = 0;
-    std::size_t pivoted = 0; ///< linear systems that needed a factorisation with pivoting
+    std::size_t factorizations = 0, solves = 0; ///< of linear systems, a solution of all kinds being one
+    std::size_t pivoted = 0;                    ///< linear systems that needed a factorisation with pivoting
     int most_limiter_iterations = 0;
     double worst_residual = 0; ///< largest relative residual of a linear system
 };
@@ -79,9 +88,11 @@ class MomentumGain : public Error {
 /// Top        psi = 0 at the first node if b > 0 anywhere there, else the local balance. Spectra within a
 ///            factor of 10 below it miss what comes from above.
 /// Systems    direct, without pivoting, to a relative residual of 1e-12; with pivoting (KLU) where that
-/// fails. Limiter    fixed-point iteration with Anderson acceleration in ln psi, from the density of the
-/// momentum
-///            before; the sum of all kinds sets L.
+///            fails.
+/// Limiter    and response: Newton's method in ln psi, damped as by Deuflhard (2011, Newton Methods for
+///            Nonlinear Problems, ch. 3), from the densities before, extrapolated; the matrix by differences
+///            in ln psi, cells that no equation shares at once. Where that stalls, fixed-point iterations
+///            with Anderson acceleration. The sum of all kinds counts.
 /// Ages       mean age T/psi, where T has the source psi; 0 where psi = 0.
 /// Throws     MomentumGain; Error(runtime) where a system is singular (nothing is lost or escapes).
 /// Accuracy   see the tests "[transport][order]".

@@ -34,11 +34,21 @@ struct KindBudget {
     double inside = 1;  ///< least part of a source's shape that lies in the grid
 };
 
+/// Where and by how much an iteration fell short.
+struct OpenPlace {
+    double momentum = 0, kinetic_energy = 0; ///< g cm s-1, erg
+    std::size_t cell = 0;
+    double radius = 0, height = 0; ///< cm, of the cell's centre
+    double change = 0;             ///< relative, of the density in the last iteration
+};
+
 /// What a march left open.
 struct MarchReport {
     std::string name;
-    std::size_t redone_steps = 0, pivoted = 0, factorizations = 0;
-    std::size_t limiter_not_converged = 0; ///< momenta
+    std::size_t redone_steps = 0, pivoted = 0, factorizations = 0, solves = 0;
+    /// Momenta at which limiter, and waves where the protons make them, did not converge, and the worst.
+    std::size_t limiter_not_converged = 0;
+    OpenPlace worst;
     int most_limiter_iterations = 0;
     std::size_t held_back = 0; ///< cells and momenta where converging streaming was kept from adding energy
     double worst_residual = 0;
@@ -65,10 +75,21 @@ struct AnchorReport {
     std::array<double, 3> residence{}; ///< s: protons in the grid over protons injected per second
 };
 
-/// Iterations of a law that depends on the cosmic rays.
+/// A law that depends on the cosmic rays. Protons and the waves they make are found together, momentum by
+/// momentum, in one march.
 struct ConfinementReport {
     bool needed = false, converged = true;
-    std::vector<double> change; ///< of each iteration: rms of the change of ln psi, weighted with energy
+    std::vector<double>
+        change; ///< of each march: largest relative change of a density in its last iterations
+    std::size_t factorizations = 0, solves = 0; ///< of linear systems, last march of the protons
+    /// The protons with other regularisations; empty unless asked for.
+    struct Regularised {
+        double width = 1;          ///< over the width used
+        double energy_density = 0; ///< at the place of the AnchorReport, erg cm-3
+        double total_energy = 0;   ///< in the grid over that of the solution
+        bool converged = true;     ///< to 1e-3 at all momenta
+    };
+    std::vector<Regularised> regularised;
 };
 
 /// Spectra and what they say, for one law.
@@ -84,30 +105,41 @@ struct Solution {
     Unevenness of_gas, of_field_energy, of_radiation;
 };
 
+struct SolveOptions {
+    /// Of laws that depend on the cosmic rays: also solve for the protons with the regularisation halved and
+    /// doubled, with the same factor of the law. Two more marches, to 1e-3.
+    bool regularisation = false;
+};
+
 /// Solves for protons, then for electrons and positrons in one march.
 ///
 /// Anchors    absolute: as the law stands. rate: nu at a place and rigidity for speed c. energy_density,
 ///            grammage, gamma_luminosity: the factor is sought, by bracketed secants in the logarithms, on
 ///            full solutions for the protons, until the quantity is met to 1e-7.
 /// Grammage, ages: from one more march with the protons' density (times the gas passed per second) as source.
-/// Laws that depend on the cosmic rays are driven by the protons' pressure at the same rigidity. Iteration:
-///            the rates of the next march are those of the gradients of the last, mixed with those before;
-///            the first is that of rigidity_power. With spec.streaming particles drift at the Alfven speed
-///            down the gradient of the protons of their rigidity; the adiabatic term of that drift is the
-///            heating by waves. Where the drift converges faster than particles lose energy its term is held
-///            at no net gain, so that waves take more there than they should.
+/// Laws that depend on the cosmic rays are driven by the protons' pressure at the same rigidity, so that
+///            protons and waves are found momentum by momentum, together with the flux limiter, to 1e-5 of
+///            the density. With spec.streaming particles drift at the Alfven speed down the gradient of the
+///            protons of their rigidity; the adiabatic term of that drift is the heating by waves. Where the
+///            drift converges faster than particles lose energy its term is held at no net gain, so that
+///            waves take more there than they should. Rates of these laws at an anchor are met to 1e-4.
+/// Regularisation: gradients of the pressure count as at least 1e-3 of pressure over outer radius; drifts
+///            turn around where it is below a tenth of it.
 /// Throws     Error(scenario) for a spec, law or anchor that cannot be met, saying what was found at the ends
-///            of the search; Error(runtime) as march(). A confinement that did not converge is reported, not
-///            thrown.
+///            of the search; Error(runtime) as march(). What did not converge is reported with
+///            its place and energy, not thrown.
 /// Cost       97 nodes, e-, e+ and protons, limiter on, one thread: 1.3 s for 48 x 64 cells, 4.5 s for 96 x
-///            96; anchors that are sought take 4-8 times the protons' part, laws that depend on the cosmic
-///            rays 20-60 times.
-Solution solve(const Problem& problem, const NamedLaw& law, const RunContext& context);
+///            96; anchors that are sought take 4-8 times the protons' part.
+Solution solve(const Problem& problem,
+               const NamedLaw& law,
+               const RunContext& context,
+               const SolveOptions& options = {});
 
 Solution solve(const TransportSpec& spec,
                const NamedLaw& law,
                const grid::Grid& grid,
                const media::Media& media,
-               const RunContext& context);
+               const RunContext& context,
+               const SolveOptions& options = {});
 
 } // namespace aureole::transport
