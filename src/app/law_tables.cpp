@@ -529,6 +529,15 @@ std::vector<std::string> law_warnings(const LawResult& law) {
                                            law.name, march.name, march.limiter_not_converged));
         }
     }
+    for (const auto& [kind, spectra] :
+         {std::pair{"protons", &solution.protons}, {"electrons", &solution.electrons}}) {
+        if (*spectra && (*spectra)->counted.at_bohm > 0) {
+            warnings.push_back(
+                fmt::format("{}: {}: the scattering rate is above the gyrofrequency at {} of {} cells "
+                            "and energies; it is held there (Bohm)",
+                            law.name, kind, (*spectra)->counted.at_bohm, (*spectra)->counted.rates));
+        }
+    }
     if (solution.confinement.needed && !solution.confinement.converged) {
         warnings.push_back(
             fmt::format("{}: the waves did not settle: the last iteration changed the spectra by "

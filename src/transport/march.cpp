@@ -23,8 +23,6 @@ constexpr double carry_over = (1 - middle) * (1 - middle) / (middle * (2 - middl
 /// Densities that a guess is extrapolated from, and how far in their logarithm.
 constexpr std::size_t most_known = 3;
 constexpr double largest_extrapolation = 1;
-/// A step is repeated where a density is below minus this part of the largest.
-constexpr double negative_part = 1e-12;
 
 /// Integral from `low` to `high` of a function ~ p^-2, per its value at `low`.
 double fitted_width(double high, double low) {
@@ -158,8 +156,10 @@ class Marcher {
         }
         const double width = std::log(node_.momentum / low.momentum);
         solve(half, trapezoid_base(width));
-        solve(low, second_base(half));
-        if (has_negative(low)) {
+        if (!half.negative) {
+            solve(low, second_base(half));
+        }
+        if (half.negative || has_negative(low)) {
             ++result_.redone_steps;
             known_.resize(std::min<std::size_t>(1, known_.size()));
             solver_.prepare(half, fitted_width(node_.momentum, half.momentum));

@@ -21,7 +21,7 @@ namespace {
 constexpr double confined_tolerance = 1e-5;
 constexpr double confined_anchor = 1e-4;
 /// Of densities that are only compared.
-constexpr double loose_tolerance = 1e-3;
+constexpr double loose_tolerance = 1e-4;
 
 double momentum_of(double rigidity) {
     return rigidity * constants::elementary_charge / constants::speed_of_light;
@@ -473,8 +473,11 @@ class Solver {
                 resonance_at(cell_resonance_.log_gradient, protons, momentum, cells_, gradient);
                 resonant = {pressure, gradient};
             }
-            rates(law, particle_of_momentum(momentum, species.rest_energy), resonant, rate,
-                  limits_of(problem_));
+            const auto counts = rates(law, particle_of_momentum(momentum, species.rest_energy), resonant,
+                                      rate, limits_of(problem_));
+            spectra.counted.rates += counts.rates;
+            spectra.counted.at_bohm += counts.at_bohm;
+            spectra.counted.at_least += counts.at_least;
             for (std::size_t cell = 0; cell < cells_; ++cell) {
                 spectra.weighted[cell * nodes + node] = static_cast<float>(weighted[node * cells_ + cell]);
                 spectra.scattering_rate[cell * nodes + node] = static_cast<float>(rate[cell]);

@@ -18,6 +18,8 @@ constexpr double largest_residual = 1e-12;
 /// part of the diagonal counts like the right-hand side.
 constexpr double rounding = 0.01;
 constexpr int most_refinements = 3;
+/// Iterations in a row that may give densities below 0.
+constexpr int most_below = 3;
 /// Densities below this part of the largest do not count for the convergence of limiter and response.
 constexpr double negligible = 1e-25;
 /// Densities are taken to be at least this part of the largest.
@@ -426,6 +428,7 @@ bool StageSolver::newton(Stage& stage, Iteration& iteration) {
 bool StageSolver::fixed_points(Stage& stage, Iteration& iteration, int rounds, double contraction) {
     Mixing mixing;
     double change = std::numeric_limits<double>::infinity();
+    int below = 0;
     std::vector<std::vector<double>> found(1);
     std::vector<std::vector<double>> leak(1, std::vector<double>(iteration.rhs.size()));
     const std::vector<std::vector<double>> rhs(1, iteration.rhs);
@@ -434,7 +437,10 @@ bool StageSolver::fixed_points(Stage& stage, Iteration& iteration, int rounds, d
         set_coefficients(stage, iteration.density);
         make_matrix(stage);
         solve_systems(stage, rhs, found, leak);
-        if (!(largest_of(found[0]) > 0)) {
+        const auto [least, most] = std::minmax_element(found[0].begin(), found[0].end());
+        below = *least < -negative_part * *most ? below + 1 : 0;
+        stage.negative = below > most_below;
+        if (stage.negative || !(*most > 0)) {
             // Nothing to be limited or to respond to: what was found for the density before stands.
             return true;
         }
@@ -480,6 +486,7 @@ void StageSolver::find_density(Stage& stage,
         }
     }
     iteration.last.momentum = stage.momentum;
+    stage.negative = false;
     iteration.density.assign(guess.begin(), guess.end());
     if (guess.empty()) {
         std::vector<std::vector<double>> found(1);

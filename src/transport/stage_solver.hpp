@@ -26,9 +26,13 @@ struct Stage {
     Factor factor;
     bool factored = false;
     LimitedFaces limited;
+    bool negative = false; ///< limiter and response were given up, since densities came out below 0
     std::vector<std::vector<double>> density; ///< [unknowns][cells]
     std::vector<std::vector<double>> leak;    ///< [unknowns][cells] A psi
 };
+
+/// Densities are negative below minus this part of the largest.
+inline constexpr double negative_part = 1e-12;
 
 /// V b of a stage from its losses and divergence. Throws MomentumGain.
 void read_losses(const Mesh& mesh, Stage& stage);

@@ -164,7 +164,8 @@ class Transport(unittest.TestCase):
 
     def test_rates_above_that_of_bohm_diffusion_are_limited_to_it(self):
         far, farther, bohm = (self.folder / name for name in ("far", "farther", "bohm"))
-        self.works(law('kind = "constant"\nrate = "1 s-1"\n'), out=far)
+        done = self.works(law('kind = "constant"\nrate = "1 s-1"\n'), out=far)
+        self.assertRegex(done.stderr, r"protons: the scattering rate is above the gyrofrequency at \d+ of \d+ cells")
         self.works(law('kind = "constant"\nrate = "100 s-1"\n'), out=farther)
         self.works(formula("Omega"), out=bohm)
         for process in ("escape: top", "ionisation", "adiabatic"):
