@@ -473,7 +473,7 @@ TEST_CASE("spectra of a grid file are not passed over without a word", "[transpo
     CHECK(complaint(said, folder.scenario()) == "accepted");
     CHECK_THAT(complaint(said + "anchor = \"rate\"\nanchor_radius = \"5 kpc\"\n", folder.scenario()),
                Contains("outside the grid, expected at most 4 kpc")); // of the file, not of [grid]
-    sample_file(false).write((folder.path / "halo.fits").string()); // Cartesian: solved on rings
+    sample_file(false).write((folder.path / "halo.fits").string());   // Cartesian: solved on rings
     CHECK(complaint(said, folder.scenario()) == "accepted");
 }
 

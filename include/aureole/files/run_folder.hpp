@@ -1,8 +1,8 @@
 #pragma once
 
-#include <cstddef>
 #include "aureole/base/run_context.hpp"
 
+#include <cstddef>
 #include <filesystem>
 #include <string>
 #include <string_view>

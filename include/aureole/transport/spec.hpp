@@ -75,11 +75,11 @@ struct TransportSpec {
     double perpendicular = 1; ///< kappa_perp/kappa_par; 1: isotropic
     Edge edge_z = Edge::one_over_r, edge_r = Edge::one_over_r;
     std::string limiter = "square_root"; ///< none, square_root, levermore_pomraning, sum
-    bool streaming = true;               ///< of self-confined laws: drift at the Alfven speed and wave heating
+    bool streaming = true; ///< of self-confined laws: drift at the Alfven speed and wave heating
     double energy_from = 0, energy_to = 0; ///< kinetic, erg; what the maps may ask for
     double bins_per_decade = 16;
-    double headroom = 30;                ///< the march starts at so many times energy_to
-    double source_age = 0;               ///< s
+    double headroom = 30;  ///< the march starts at so many times energy_to
+    double source_age = 0; ///< s
     double helium_fraction = 0.1;
     double nuclear_enhancement = 1.8;
     physics::PionModel pion_model = physics::PionModel::kafexhiu_2014_continuous;
